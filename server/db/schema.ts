@@ -38,7 +38,7 @@ export const users = mysqlTable('users', {
 /** The session cookie is stateless; it counts only while its row here is alive. The id is a hash of the cookie's secret. */
 export const sessions = mysqlTable('sessions', {
   id: sha256('id').primaryKey(),
-  userId: ref('user_id').notNull(),
+  userId: ref('user_id').notNull().references(() => users.id),
   createdAt: at('created_at').notNull(),
   lastSeenAt: at('last_seen_at').notNull(),
   expiresAt: at('expires_at').notNull(),
@@ -49,7 +49,7 @@ export const sessions = mysqlTable('sessions', {
 export const accountLinks = mysqlTable('account_links', {
   tokenHash: sha256('token_hash').primaryKey(),
   kind: varchar('kind', { length: 16 }).$type<'invitation' | 'reset'>().notNull(),
-  userId: ref('user_id').notNull(),
+  userId: ref('user_id').notNull().references(() => users.id),
   createdAt: at('created_at').notNull(),
   expiresAt: at('expires_at').notNull(),
   usedAt: at('used_at'),
@@ -57,7 +57,7 @@ export const accountLinks = mysqlTable('account_links', {
 
 export const apiTokens = mysqlTable('api_tokens', {
   id: id(),
-  userId: ref('user_id').notNull(),
+  userId: ref('user_id').notNull().references(() => users.id),
   name: varchar('name', { length: 120 }).notNull(),
   tokenHash: sha256('token_hash').notNull(),
   createdAt: at('created_at').notNull(),
@@ -67,7 +67,7 @@ export const apiTokens = mysqlTable('api_tokens', {
 
 export const auditEntries = mysqlTable('audit_entries', {
   id: bigint('id', { mode: 'number' }).primaryKey().autoincrement(),
-  userId: ref('user_id'),
+  userId: ref('user_id').references(() => users.id),
   action: varchar('action', { length: 64 }).notNull(),
   subject: varchar('subject', { length: 120 }),
   details: json<Record<string, unknown>>('details'),
@@ -80,15 +80,15 @@ export const campaigns = mysqlTable('campaigns', {
   name: varchar('name', { length: 160 }).notNull(),
   specimen: varchar('specimen', { length: 240 }),
   notes: text('notes'),
-  createdBy: ref('created_by').notNull(),
+  createdBy: ref('created_by').notNull().references(() => users.id),
   createdAt: at('created_at').notNull(),
   updatedAt: at('updated_at').notNull(),
 }, t => [index('campaigns_created').on(t.createdAt, t.id)])
 
 export const campaignGuests = mysqlTable('campaign_guests', {
-  campaignId: ref('campaign_id').notNull(),
-  userId: ref('user_id').notNull(),
-  grantedBy: ref('granted_by').notNull(),
+  campaignId: ref('campaign_id').notNull().references(() => campaigns.id),
+  userId: ref('user_id').notNull().references(() => users.id),
+  grantedBy: ref('granted_by').notNull().references(() => users.id),
   createdAt: at('created_at').notNull(),
 }, t => [primaryKey({ columns: [t.campaignId, t.userId] })])
 
@@ -107,10 +107,10 @@ export const acquisitions = mysqlTable('acquisitions', {
   id: id(),
   /** Short number people use when they talk: "acquisition 14". */
   number: int('number').notNull(),
-  campaignId: ref('campaign_id').notNull(),
+  campaignId: ref('campaign_id').notNull().references(() => campaigns.id),
   title: varchar('title', { length: 160 }).notNull(),
   notes: text('notes'),
-  cameraProfileId: ref('camera_profile_id'),
+  cameraProfileId: ref('camera_profile_id').references(() => cameraProfiles.id),
   /** Null: one over the clip's frame rate. */
   frameExposureSeconds: double('frame_exposure_seconds'),
   transfer: varchar('transfer', { length: 16 }).$type<Transfer>().notNull(),
@@ -120,7 +120,7 @@ export const acquisitions = mysqlTable('acquisitions', {
   plan: json<PlanLine[]>('plan').notNull(),
   autoRun: boolean('auto_run').notNull(),
   channels: json<ChannelMapping | null>('channels'),
-  createdBy: ref('created_by').notNull(),
+  createdBy: ref('created_by').notNull().references(() => users.id),
   createdAt: at('created_at').notNull(),
   updatedAt: at('updated_at').notNull(),
 }, t => [uniqueIndex('acquisitions_number').on(t.number), index('acquisitions_campaign').on(t.campaignId, t.number), index('acquisitions_created').on(t.createdAt, t.id)])
@@ -128,8 +128,8 @@ export const acquisitions = mysqlTable('acquisitions', {
 /** A clip part or a record, from the first byte to proven. The row outlives the tus client's memory of it. */
 export const uploads = mysqlTable('uploads', {
   id: id(),
-  acquisitionId: ref('acquisition_id').notNull(),
-  userId: ref('user_id').notNull(),
+  acquisitionId: ref('acquisition_id').notNull().references(() => acquisitions.id),
+  userId: ref('user_id').notNull().references(() => users.id),
   kind: varchar('kind', { length: 8 }).$type<'clip' | 'record'>().notNull(),
   part: int('part').notNull(),
   filename: varchar('filename', { length: 255 }).notNull(),
@@ -150,9 +150,9 @@ export const uploads = mysqlTable('uploads', {
 export const jobs = mysqlTable('jobs', {
   id: id(),
   stage: varchar('stage', { length: 16 }).$type<Stage>().notNull(),
-  acquisitionId: ref('acquisition_id').notNull(),
+  acquisitionId: ref('acquisition_id').notNull().references(() => acquisitions.id),
   /** The upload that a verify job proves. */
-  uploadId: ref('upload_id'),
+  uploadId: ref('upload_id').references(() => uploads.id),
   state: varchar('state', { length: 16 }).$type<JobState>().notNull(),
   /** acquisition:stage while the job is active, so that a stage is never queued twice; else null. */
   activeKey: varchar('active_key', { length: 96 }),
@@ -189,7 +189,7 @@ export const jobs = mysqlTable('jobs', {
 
 /** The accepted output of a stage on an acquisition; stale as soon as its inputs' key is another. */
 export const stageOutputs = mysqlTable('stage_outputs', {
-  acquisitionId: ref('acquisition_id').notNull(),
+  acquisitionId: ref('acquisition_id').notNull().references(() => acquisitions.id),
   stage: varchar('stage', { length: 16 }).$type<PipelineStage>().notNull(),
   jobId: ref('job_id'),
   inputsKey: sha256('inputs_key').notNull(),
@@ -204,7 +204,7 @@ export const stageOutputs = mysqlTable('stage_outputs', {
 }, t => [primaryKey({ columns: [t.acquisitionId, t.stage] })])
 
 export const alignments = mysqlTable('alignments', {
-  acquisitionId: ref('acquisition_id').notNull(),
+  acquisitionId: ref('acquisition_id').notNull().references(() => acquisitions.id),
   version: int('version').notNull(),
   offsetSeconds: double('offset_seconds').notNull(),
   driftPpm: double('drift_ppm').notNull(),
@@ -213,22 +213,22 @@ export const alignments = mysqlTable('alignments', {
   method: varchar('method', { length: 16 }).$type<'light' | 'manual'>().notNull(),
   evidence: json<AlignmentEvidence | null>('evidence'),
   accepted: boolean('accepted').notNull(),
-  authorId: ref('author_id'),
+  authorId: ref('author_id').references(() => users.id),
   createdAt: at('created_at').notNull(),
 }, t => [primaryKey({ columns: [t.acquisitionId, t.version] })])
 
 export const cutLists = mysqlTable('cut_lists', {
-  acquisitionId: ref('acquisition_id').notNull(),
+  acquisitionId: ref('acquisition_id').notNull().references(() => acquisitions.id),
   version: int('version').notNull(),
   alignmentVersion: int('alignment_version').notNull(),
   groups: json<Group[]>('cut_groups').notNull(),
-  authorId: ref('author_id'),
+  authorId: ref('author_id').references(() => users.id),
   createdAt: at('created_at').notNull(),
 }, t => [primaryKey({ columns: [t.acquisitionId, t.version] })])
 
 export const frameSets = mysqlTable('frame_sets', {
   id: id(),
-  acquisitionId: ref('acquisition_id').notNull(),
+  acquisitionId: ref('acquisition_id').notNull().references(() => acquisitions.id),
   line: int('line').notNull(),
   frequencyHz: double('frequency_hz').notNull(),
   state: varchar('state', { length: 16 }).$type<FrameSetState>().notNull(),
@@ -239,14 +239,14 @@ export const frameSets = mysqlTable('frame_sets', {
   height: int('height').notNull(),
   /** Set when a newer run has taken its place; kept so that a link in a report still resolves. */
   supersededAt: at('superseded_at'),
-  releasedBy: ref('released_by'),
+  releasedBy: ref('released_by').references(() => users.id),
   releasedAt: at('released_at'),
   releaseNote: text('release_note'),
   createdAt: at('created_at').notNull(),
 }, t => [index('frame_sets_acquisition').on(t.acquisitionId, t.line), index('frame_sets_created').on(t.createdAt, t.id)])
 
 export const frameSetFiles = mysqlTable('frame_set_files', {
-  frameSetId: ref('frame_set_id').notNull(),
+  frameSetId: ref('frame_set_id').notNull().references(() => frameSets.id),
   name: varchar('name', { length: 120 }).notNull(),
   bytes: bigint('bytes', { mode: 'number' }).notNull(),
   sha256: sha256().notNull(),

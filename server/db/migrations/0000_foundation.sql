@@ -257,6 +257,29 @@ CREATE TABLE `users` (
 	CONSTRAINT `users_email` UNIQUE(`email`)
 );
 --> statement-breakpoint
+ALTER TABLE `account_links` ADD CONSTRAINT `account_links_user_id_users_id_fk` FOREIGN KEY (`user_id`) REFERENCES `users`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `acquisitions` ADD CONSTRAINT `acquisitions_campaign_id_campaigns_id_fk` FOREIGN KEY (`campaign_id`) REFERENCES `campaigns`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `acquisitions` ADD CONSTRAINT `acquisitions_camera_profile_id_camera_profiles_id_fk` FOREIGN KEY (`camera_profile_id`) REFERENCES `camera_profiles`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `acquisitions` ADD CONSTRAINT `acquisitions_created_by_users_id_fk` FOREIGN KEY (`created_by`) REFERENCES `users`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `alignments` ADD CONSTRAINT `alignments_acquisition_id_acquisitions_id_fk` FOREIGN KEY (`acquisition_id`) REFERENCES `acquisitions`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `alignments` ADD CONSTRAINT `alignments_author_id_users_id_fk` FOREIGN KEY (`author_id`) REFERENCES `users`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `api_tokens` ADD CONSTRAINT `api_tokens_user_id_users_id_fk` FOREIGN KEY (`user_id`) REFERENCES `users`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `audit_entries` ADD CONSTRAINT `audit_entries_user_id_users_id_fk` FOREIGN KEY (`user_id`) REFERENCES `users`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `campaign_guests` ADD CONSTRAINT `campaign_guests_campaign_id_campaigns_id_fk` FOREIGN KEY (`campaign_id`) REFERENCES `campaigns`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `campaign_guests` ADD CONSTRAINT `campaign_guests_user_id_users_id_fk` FOREIGN KEY (`user_id`) REFERENCES `users`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `campaign_guests` ADD CONSTRAINT `campaign_guests_granted_by_users_id_fk` FOREIGN KEY (`granted_by`) REFERENCES `users`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `campaigns` ADD CONSTRAINT `campaigns_created_by_users_id_fk` FOREIGN KEY (`created_by`) REFERENCES `users`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `cut_lists` ADD CONSTRAINT `cut_lists_acquisition_id_acquisitions_id_fk` FOREIGN KEY (`acquisition_id`) REFERENCES `acquisitions`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `cut_lists` ADD CONSTRAINT `cut_lists_author_id_users_id_fk` FOREIGN KEY (`author_id`) REFERENCES `users`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `frame_set_files` ADD CONSTRAINT `frame_set_files_frame_set_id_frame_sets_id_fk` FOREIGN KEY (`frame_set_id`) REFERENCES `frame_sets`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `frame_sets` ADD CONSTRAINT `frame_sets_acquisition_id_acquisitions_id_fk` FOREIGN KEY (`acquisition_id`) REFERENCES `acquisitions`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `frame_sets` ADD CONSTRAINT `frame_sets_released_by_users_id_fk` FOREIGN KEY (`released_by`) REFERENCES `users`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `jobs` ADD CONSTRAINT `jobs_acquisition_id_acquisitions_id_fk` FOREIGN KEY (`acquisition_id`) REFERENCES `acquisitions`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `jobs` ADD CONSTRAINT `jobs_upload_id_uploads_id_fk` FOREIGN KEY (`upload_id`) REFERENCES `uploads`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `sessions` ADD CONSTRAINT `sessions_user_id_users_id_fk` FOREIGN KEY (`user_id`) REFERENCES `users`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `stage_outputs` ADD CONSTRAINT `stage_outputs_acquisition_id_acquisitions_id_fk` FOREIGN KEY (`acquisition_id`) REFERENCES `acquisitions`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `uploads` ADD CONSTRAINT `uploads_acquisition_id_acquisitions_id_fk` FOREIGN KEY (`acquisition_id`) REFERENCES `acquisitions`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
+ALTER TABLE `uploads` ADD CONSTRAINT `uploads_user_id_users_id_fk` FOREIGN KEY (`user_id`) REFERENCES `users`(`id`) ON DELETE no action ON UPDATE no action;--> statement-breakpoint
 CREATE INDEX `account_links_user` ON `account_links` (`user_id`);--> statement-breakpoint
 CREATE INDEX `acquisitions_campaign` ON `acquisitions` (`campaign_id`,`number`);--> statement-breakpoint
 CREATE INDEX `acquisitions_created` ON `acquisitions` (`created_at`,`id`);--> statement-breakpoint
