@@ -16,7 +16,7 @@ export default defineConfig({
     projects: [
       { resolve: { alias }, test: { name: 'unit', include: ['tests/unit/**/*.test.ts'], testTimeout: 60_000 } },
       { resolve: { alias }, test: { name: 'reference', include: ['tests/reference/**/*.test.ts'], testTimeout: 180_000, fileParallelism: false } },
-      { resolve: { alias }, test: { name: 'db', include: ['tests/db/**/*.test.ts'], testTimeout: 60_000, hookTimeout: 120_000, fileParallelism: false } },
+      { resolve: { alias }, test: { name: 'db', include: ['tests/db/**/*.test.ts'], globalSetup: ['tests/support/mariaDbSetup.ts'], testTimeout: 60_000, hookTimeout: 120_000, fileParallelism: false } },
       { resolve: { alias }, test: { name: 'e2e', include: ['tests/e2e/**/*.test.ts'], testTimeout: 300_000, hookTimeout: 300_000, fileParallelism: false } },
     ],
   },

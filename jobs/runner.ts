@@ -1,0 +1,2 @@
+console.log('runner')
+setInterval(() => {}, 1000)
