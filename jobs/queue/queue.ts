@@ -60,5 +60,5 @@ export interface Queue {
 
 /** A claim is lost when its runner has not beaten for this long. */
 export const leaseSeconds = 20
-export const heartbeatSeconds = 2
+export const heartbeatSeconds = 1
 export const crashesUntilParked = 3

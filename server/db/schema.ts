@@ -119,6 +119,8 @@ export const acquisitions = mysqlTable('acquisitions', {
   guardSeconds: double('guard_seconds').notNull(),
   plan: json<PlanLine[]>('plan').notNull(),
   autoRun: boolean('auto_run').notNull(),
+  /** A person asked for the stages to run; with autoRun they run without being asked. */
+  runRequestedAt: at('run_requested_at'),
   channels: json<ChannelMapping | null>('channels'),
   createdBy: ref('created_by').notNull().references(() => users.id),
   createdAt: at('created_at').notNull(),
@@ -208,8 +210,9 @@ export const alignments = mysqlTable('alignments', {
   version: int('version').notNull(),
   offsetSeconds: double('offset_seconds').notNull(),
   driftPpm: double('drift_ppm').notNull(),
-  residual: double('residual').notNull(),
-  confidence: double('confidence').notNull(),
+  /** Null until the align stage has judged a manual alignment. */
+  residual: double('residual'),
+  confidence: double('confidence'),
   method: varchar('method', { length: 16 }).$type<'light' | 'manual'>().notNull(),
   evidence: json<AlignmentEvidence | null>('evidence'),
   accepted: boolean('accepted').notNull(),

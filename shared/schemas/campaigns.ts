@@ -98,7 +98,7 @@ export const acquisitionSummarySchema = z.object({
 export type AcquisitionSummary = z.infer<typeof acquisitionSummarySchema>
 
 export const alignmentOutSchema = z.object({
-  offsetSeconds: z.number(), driftPpm: z.number(), residual: z.number(), confidence: z.number(), method: z.enum(['light', 'manual']), version: z.number().int(),
+  offsetSeconds: z.number(), driftPpm: z.number(), residual: z.number().nullable(), confidence: z.number().nullable(), method: z.enum(['light', 'manual']), version: z.number().int(),
   accepted: z.boolean(), authorName: z.string().nullable(), createdAt: timeSchema,
   evidence: z.object({ gain: z.number(), background: z.number(), secondBestRatio: z.number().nullable(), secondBestOffsetSeconds: z.number().nullable(), edges: z.number(), beat: z.boolean(), reasons: z.array(z.string()) }).nullable(),
 })
