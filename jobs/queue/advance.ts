@@ -5,7 +5,7 @@ import { acquisitions, alignments, cutLists, stageOutputs } from '../../server/d
 import { LampsumError } from '../../shared/errors'
 import { activeJobStates, pipeline, pipelineStages, type PipelineStage } from '../../shared/states'
 import { inputsKey, isCurrent, loadSituation, missingFor, type Situation } from './inputs'
-import { createQueue } from './mariadbQueue'
+import { publishJob } from './mariadbQueue'
 
 /**
  * Queues every stage whose inputs are there and whose output is missing or stale. A stage that already ended badly
@@ -21,7 +21,7 @@ export async function advanceWithin(transaction: Transaction, acquisitionId: str
   for (const stage of pipelineStages) {
     const key = inputsKey(situation, stage)
     if (!key || isCurrent(situation, stage) || isActive(situation, stage) || endedBadly(situation, stage, key)) continue
-    await createQueue(transaction as unknown as Database).publish({ stage, acquisitionId, inputsKey: key }, transaction)
+    await publishJob(transaction, { stage, acquisitionId, inputsKey: key })
   }
 }
 
@@ -45,7 +45,7 @@ export function restartFrom(database: Database, acquisitionId: string, from: Pip
     const situation = await loadSituation(transaction, acquisitionId)
     const active = situation.latestJobs[stage]
     if (active && isActive(situation, stage)) return { jobId: active.id }
-    const jobId = await createQueue(transaction as unknown as Database).publish({ stage, acquisitionId, inputsKey: inputsKey(situation, stage)! }, transaction)
+    const jobId = await publishJob(transaction, { stage, acquisitionId, inputsKey: inputsKey(situation, stage)! })
     if (!jobId) throw new LampsumError('wrong-state')
     return { jobId }
   }))

@@ -74,7 +74,8 @@ export function createQueue(database: Database, clock: () => Date = () => new Da
   }
 }
 
-async function publishJob(transaction: Transaction, job: NewJob, now: Date): Promise<string | null> {
+/** Adds a job inside a caller's transaction; null when the same work is active already. */
+export async function publishJob(transaction: Transaction, job: NewJob, now = new Date()): Promise<string | null> {
   const id = randomUUID()
   try {
     await transaction.insert(jobs).values({

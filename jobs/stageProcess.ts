@@ -1,0 +1,72 @@
+import { Worker } from 'node:worker_threads'
+import type { Stage } from '../shared/states'
+import type { Progress } from './queue/queue'
+import type { StageResult } from './stages/stage'
+
+export interface WorkerTask {
+  stage: Stage
+  payload: unknown
+  workDir: string
+}
+
+/** What a stage could not do, in a form that crosses threads. */
+export interface Failure {
+  code: string
+  message: string
+  review: boolean
+  detail: string
+}
+
+export type WorkerMessage
+  = | { kind: 'progress', progress: Progress }
+    | { kind: 'log', line: string }
+    | { kind: 'result', result: StageResult }
+    | { kind: 'failure', failure: Failure }
+
+export class StageFailure extends Error {
+  override name = 'StageFailure'
+  constructor(readonly failure: Failure) {
+    super(failure.message)
+  }
+}
+
+const diskCodes = new Set(['ENOSPC', 'EDQUOT'])
+
+/** The runner's one mapper: errors that carry a code and a sentence keep them, others are told plainly. */
+export function failureOf(error: unknown): Failure {
+  if (error instanceof StageFailure) return error.failure
+  const { name, code, message, options, stack } = error as Error & { code?: string, options?: { review?: boolean } }
+  const detail = stack ?? String(error)
+  if (code && diskCodes.has(code)) return { code: 'disk-full', message: 'The disk is full. This goes on by itself when there is space again.', review: false, detail }
+  if (['StageError', 'MediaError', 'RecordError', 'SolveError', 'SignalError'].includes(name) && code) return { code, message, review: options?.review ?? false, detail }
+  if (name === 'LampsumError' && code) return { code, message, review: false, detail }
+  return { code: 'unexpected', message: `Something unexpected stopped this: ${message}. Retry it once; if it stays, tell the people who keep Lampsum and show them the log.`, review: false, detail }
+}
+
+export interface StageRun {
+  result: Promise<StageResult>
+  abort: () => void
+}
+
+/** Starts a stage in a worker thread. After `abort` it has four seconds to end before it is terminated. */
+export function runInWorker(entry: string, task: WorkerTask, onProgress: (progress: Progress) => void, onLog: (line: string) => void): StageRun {
+  const worker = new Worker(entry, { workerData: task })
+  let timer: NodeJS.Timeout | undefined
+  const result = new Promise<StageResult>((resolve, reject) => {
+    worker.on('message', (message: WorkerMessage) => {
+      if (message.kind === 'progress') onProgress(message.progress)
+      else if (message.kind === 'log') onLog(message.line)
+      else if (message.kind === 'result') resolve(message.result)
+      else reject(new StageFailure(message.failure))
+    })
+    worker.once('error', reject)
+    worker.once('exit', code => reject(new Error(`The worker thread ended with code ${code} before it had a result`)))
+  }).finally(() => clearTimeout(timer))
+  return {
+    result,
+    abort() {
+      worker.postMessage('abort')
+      timer ??= setTimeout(() => void worker.terminate(), 4000)
+    },
+  }
+}
