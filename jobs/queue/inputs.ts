@@ -23,6 +23,7 @@ export interface Situation {
   latestJobs: Partial<Record<PipelineStage, JobRow>>
   /** The newest alignment that a person accepted, and the newest cut list that a person stored. */
   manualAlignment: typeof alignments.$inferSelect | null
+  newestCutList: typeof cutLists.$inferSelect | null
   manualCutList: typeof cutLists.$inferSelect | null
 }
 
@@ -46,6 +47,7 @@ export async function loadSituation(database: Database | Transaction, acquisitio
     outputs: Object.fromEntries(outputs.map(output => [output.stage, output])),
     latestJobs: latest,
     manualAlignment: alignment ?? null,
+    newestCutList: cutList ?? null,
     manualCutList: cutList?.authorId ? cutList : null,
   }
 }
