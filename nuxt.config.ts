@@ -24,6 +24,7 @@ export default defineNuxtConfig({
     session: {
       name: 'lampsum',
       maxAge: 60 * 60 * 24 * 7,
+      sessionHeader: false,
       password: '',
       cookie: { secure: false, sameSite: 'lax', httpOnly: true },
     },
@@ -33,6 +34,7 @@ export default defineNuxtConfig({
   nitro: {
     output: { dir: process.env.LAMPSUM_OUTPUT_DIR || '.output' },
     esbuild: { options: { target: 'node20' } },
+    errorHandler: '~/server/error',
     // The pipeline is bundled on its own and never becomes part of the web server.
     watchOptions: { ignored: ['**/.data/**'] },
   },
@@ -41,6 +43,8 @@ export default defineNuxtConfig({
     tsConfig: { exclude: ['../jobs', '../scripts', '../tests', '../.output*', '../.data*', '../.nuxt-*'] },
   },
   telemetry: false,
+  // Pages ask /api/auth/me; the module's own session route is not part of the API and stays shut.
+  auth: { loadStrategy: 'none' },
   eslint: { config: { stylistic: { indent: 2, semi: false, quotes: 'single', braceStyle: '1tbs' } } },
   tailwindcss: { cssPath: false, viewer: false },
 })

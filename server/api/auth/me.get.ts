@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/auth/me', async ({ user }) => user)

@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/people', ({ query }) => listPeople(useDatabase(), query))

@@ -1,0 +1,1 @@
+export default defineRoute('POST /api/tokens', ({ user, body }) => createToken(useDatabase(), user.id, body.name))

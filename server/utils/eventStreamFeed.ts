@@ -1,0 +1,178 @@
+import { heartbeatSeconds, resyncEvent } from '#shared/events'
+import type { Database } from '../db/client'
+import type { StreamClient } from './eventStreamClient'
+import { encodeEvent, readEvents, readNewestId, readVisibility, type EventRow } from './eventStreamRows'
+import { findLiveCredentials } from './session'
+
+export interface FeedOptions {
+  database: () => Database
+  demo: () => boolean
+  pollMs?: number
+  recheckMs?: number
+  heartbeatMs?: number
+}
+
+const pageSize = 200
+/** A reader this far behind is faster served by loading its lists again. */
+const longestReplay = 20_000
+const pauseAfterErrorMs = 1000
+const sleep = (ms: number) => new Promise<void>(resolve => setTimeout(resolve, ms))
+
+/**
+ * One reader of the events table for all streams of this process; it works only while somebody listens. A client
+ * that cannot take more is left alone and catches up from the table later, so nothing piles up in memory.
+ */
+export class EventFeed {
+  private readonly clients = new Set<StreamClient>()
+  /** The last event handed to the live clients; null while nobody listens. */
+  private newest: number | null = null
+  private starting: Promise<void> | undefined
+  private timers: NodeJS.Timeout[] = []
+  private ended = false
+
+  constructor(private readonly options: FeedOptions) {}
+
+  get size(): number {
+    return this.clients.size
+  }
+
+  /** Reads where the table stands; throws when the database is away, before anything was sent. */
+  async ready(): Promise<void> {
+    if (this.newest !== null) return
+    this.starting ??= readNewestId(this.options.database()).then((id) => {
+      this.newest ??= id
+    }).finally(() => {
+      this.starting = undefined
+    })
+    await this.starting
+  }
+
+  /** Adds a client; `cursor` is the last id it has seen, null when it has seen none, NaN when what it sent is no id. */
+  async join(client: StreamClient, cursor: number | null): Promise<void> {
+    const counted = cursor === null ? 0 : await readNewestId(this.options.database())
+    while (this.newest === null) await this.ready()
+    if (this.ended) return client.close()
+    if (client.closed) return
+    const known = Math.max(counted, this.newest)
+    client.position = cursor ?? known
+    this.clients.add(client)
+    void client.gone.then(() => this.leave(client))
+    client.send(cursor === null ? `retry: 2000\nid: ${known}\n\n` : 'retry: 2000\n\n')
+    if (cursor !== null && !(cursor <= known && known - cursor <= longestReplay)) this.resync(client)
+    client.response.on('drain', () => void this.catchUp(client))
+    this.start()
+    await this.catchUp(client)
+  }
+
+  closeAll(): void {
+    this.ended = true
+    for (const client of this.clients) client.close()
+    this.stop()
+  }
+
+  private leave(client: StreamClient): void {
+    this.clients.delete(client)
+    if (!this.clients.size) this.stop()
+  }
+
+  private start(): void {
+    if (this.timers.length) return
+    this.timers = [
+      setInterval(() => void this.recheck(), this.options.recheckMs ?? 5000),
+      setInterval(() => this.beat(), this.options.heartbeatMs ?? heartbeatSeconds * 1000),
+    ]
+    void this.poll(this.timers)
+  }
+
+  private stop(): void {
+    this.timers.forEach(clearInterval)
+    this.timers = []
+    this.newest = null
+  }
+
+  /** Runs until the timers it was started with are replaced. */
+  private async poll(run: NodeJS.Timeout[]): Promise<void> {
+    while (this.timers === run) {
+      try {
+        const rows = await readEvents(this.options.database(), this.newest!, pageSize)
+        const maySee = rows.length ? await readVisibility(this.options.database(), this.users()) : undefined
+        if (this.timers !== run) return
+        if (maySee) this.fanOut(rows, maySee)
+        if (rows.length < pageSize) await sleep(this.options.pollMs ?? 200)
+      } catch {
+        await sleep(pauseAfterErrorMs)
+      }
+    }
+  }
+
+  private users() {
+    return [...this.clients].map(client => client.caller.user)
+  }
+
+  private fanOut(rows: EventRow[], maySee: Awaited<ReturnType<typeof readVisibility>>): void {
+    this.newest = rows.at(-1)!.id
+    // The same bytes for everybody who sees the same: 300 streams share one buffer.
+    const shared = new Map<string, Buffer>()
+    for (const client of this.clients) {
+      if (!client.live) continue
+      if (client.blocked) {
+        client.live = false
+        continue
+      }
+      const visible = rows.filter(row => row.id > client.position && maySee(client.caller.user, row))
+      client.position = Math.max(client.position, this.newest)
+      if (!visible.length) continue
+      const key = visible.map(row => row.id).join()
+      if (!shared.has(key)) shared.set(key, Buffer.from(visible.map(encodeEvent).join('')))
+      client.send(shared.get(key)!)
+    }
+  }
+
+  private readonly catchingUp = new WeakSet<StreamClient>()
+
+  /** Sends what a client misses, page by page as it drains; ends with the client live or blocked. */
+  private async catchUp(client: StreamClient): Promise<void> {
+    if (client.live || this.catchingUp.has(client)) return
+    this.catchingUp.add(client)
+    while (!client.closed && !client.blocked && this.newest !== null) {
+      if (client.position >= this.newest) {
+        client.live = true
+        break
+      }
+      await this.sendPage(client).catch(() => sleep(pauseAfterErrorMs))
+    }
+    this.catchingUp.delete(client)
+  }
+
+  private async sendPage(client: StreamClient): Promise<void> {
+    const rows = await readEvents(this.options.database(), client.position, pageSize)
+    const maySee = await readVisibility(this.options.database(), [client.caller.user])
+    // The next id is not there: it was too old to be kept.
+    if (rows[0]?.id !== client.position + 1) return this.resync(client)
+    client.position = rows.at(-1)!.id
+    const visible = rows.filter(row => maySee(client.caller.user, row))
+    if (visible.length) client.send(visible.map(encodeEvent).join(''))
+  }
+
+  private resync(client: StreamClient): void {
+    client.position = this.newest ?? client.position
+    client.send(`id: ${client.position}\nevent: ${resyncEvent}\ndata: {"type":"${resyncEvent}"}\n\n`)
+  }
+
+  private beat(): void {
+    for (const client of this.clients) if (!client.blocked) client.send(`: beat\nid: ${client.position}\n\n`)
+  }
+
+  /** Closes streams whose credential ended or whose person has another role now, and drops those that stall. */
+  private async recheck(): Promise<void> {
+    for (const client of this.clients) if (client.stalled) client.drop()
+    const clients = [...this.clients]
+    try {
+      const credentials = new Map(clients.map(client => [client.caller.credential.id, client.caller.credential]))
+      const live = await findLiveCredentials(this.options.database(), [...credentials.values()], { demo: this.options.demo() })
+      for (const client of clients) if (live.get(client.caller.credential.id)?.user.role !== client.caller.user.role) client.close()
+    } catch {
+      // While the database is away there is nothing to send either; the next round looks again.
+    }
+  }
+}
