@@ -1,0 +1,112 @@
+import type { AlignmentEvidence } from '../../shared/measurement'
+import type { Polished } from './alignPolish'
+import { offsetOf, type AlignProblem } from './alignProblem'
+import { beatAmplitude } from './lampTones'
+import { windowMean } from './lightPrediction'
+
+interface Judged {
+  best: Polished
+  second: Polished | null
+  noiseVariance: number
+  residual: number
+}
+
+/** 0 at or beyond `bad`, 1 at or beyond `good`, linear in the logarithm between. */
+function grade(value: number, bad: number, good: number): number {
+  if (Number.isNaN(value)) return 0
+  return Math.min(1, Math.max(0, (Math.log(Math.max(value, 1e-12)) - Math.log(bad)) / (Math.log(good) - Math.log(bad))))
+}
+
+/** Lamp edges and level steps in the covered part of the record: changes of the 0.1 s mean by 15 % of the highest level. */
+function countEdges(problem: AlignProblem, best: Polished): number {
+  const { integrals, times, recordSeconds } = problem
+  const from = Math.max(0, offsetOf(best))
+  const to = Math.min(recordSeconds, offsetOf(best) + (1 + best.driftPpm * 1e-6) * times[times.length - 1])
+  const span = 0.1
+  const changes: number[] = []
+  let highest = 0
+  for (let time = from + span; time < to - span; time += span / 5) {
+    const before = windowMean(integrals, time - span, span)
+    const after = windowMean(integrals, time, span)
+    highest = Math.max(highest, Math.abs(before), Math.abs(after))
+    changes.push(Math.abs(after - before))
+  }
+  let edges = 0
+  let quiet = 5
+  for (let k = 0; k < changes.length; k++) {
+    const peak = changes[k] > 0.15 * highest && changes[k] >= Math.max(changes[k - 1] ?? 0, changes[k + 1] ?? 0)
+    if (peak && quiet >= 5) {
+      edges++
+      quiet = 0
+    } else {
+      quiet++
+    }
+  }
+  return edges
+}
+
+function wholePeriods(problem: AlignProblem): { frequencyHz: number, periods: number } | null {
+  for (const tone of problem.tones) {
+    const periods = tone.frequencyHz * problem.exposureSeconds
+    if (periods > 0.5 && Math.abs(periods - Math.round(periods)) < 0.012) return { frequencyHz: tone.frequencyHz, periods: Math.round(periods) }
+  }
+  return null
+}
+
+function featureSentence(problem: AlignProblem, edges: number, beat: boolean): string {
+  const whole = wholePeriods(problem)
+  if (beat && edges > 0) return `${edges} lamp ${edges === 1 ? 'edge or level step' : 'edges or level steps'} and the lamp's beat in the frames tie clip and record together.`
+  if (beat) return 'No lamp edge lies inside the clip; only the lamp\'s beat in the frames ties it to the record.'
+  const why = whole
+    ? `The lamp completes a whole number of periods in each exposure (${whole.frequencyHz.toFixed(1)} Hz, ${whole.periods} periods), so the frames carry no beat`
+    : 'The frames carry no beat of the lamp above their noise'
+  if (edges > 0) return `${why}; only ${edges} lamp ${edges === 1 ? 'edge or level step ties' : 'edges or level steps tie'} clip and record together.`
+  return `${why}, and no lamp edge lies inside the clip: nothing ties clip and record together. Set offset and drift by hand.`
+}
+
+/**
+ * How far an automatic alignment may be trusted, and why.
+ *
+ * The confidence is the weakest of five grades: features seen (edges, beat), residual over the span of light, how much
+ * worse the best solution elsewhere is, formal precision of the offset against a frame, and share of the clip covered.
+ * Each grade below 1 gives a sentence.
+ */
+export function judgeAlignment(problem: AlignProblem, judged: Judged): { confidence: number, evidence: AlignmentEvidence } {
+  const { best, second, residual } = judged
+  const edges = countEdges(problem, best)
+  const residualRms = Math.sqrt(best.squares / best.frames)
+  const highest = problem.light.reduce((most, value) => Math.max(most, value - best.background), 0)
+  const strongest = Math.max(0, ...problem.tones.map(tone => beatAmplitude(tone, problem.exposureSeconds))) * highest
+  const beat = strongest > Math.max(1.5 * residualRms, 0.0015 * highest)
+  // Below a tenth of a percent of the span the two fits are equally good for every purpose.
+  const floor = Math.sqrt(judged.noiseVariance) * 1e-2
+  const ratio = second ? Math.max(1, (Math.sqrt(second.squares / second.frames) + floor) / (residualRms + floor)) : null
+  const precisionFrames = best.middleDeviationSeconds / problem.frameSeconds
+  const covered = best.frames / problem.light.length
+  const grades = {
+    features: edges >= 2 ? 1 : edges === 1 ? (beat ? 0.9 : 0.65) : beat ? 0.75 : 0.1,
+    residual: grade(residual, 0.12, 0.02),
+    uniqueness: ratio === null ? 1 : grade(ratio, 1, 1.5),
+    precision: grade(precisionFrames, 0.3, 0.02),
+    coverage: covered >= 0.9 ? 1 : 0.5 + 0.5 * covered / 0.9,
+  }
+  const reasons = [featureSentence(problem, edges, beat)]
+  if (grades.residual < 1) reasons.push(`Measured and predicted light differ by ${(100 * residual).toFixed(1)} % of their span; check transfer, exposure and channel.`)
+  if (ratio !== null && grades.uniqueness < 1) {
+    reasons.push(`An offset of ${offsetOf(second!).toFixed(3)} s fits nearly as well (residual ${ratio.toFixed(2)} times the best one's); compare the two.`)
+  }
+  if (grades.precision < 1) {
+    reasons.push(Number.isFinite(precisionFrames)
+      ? `The light fixes the offset only to about ${precisionFrames.toFixed(2)} frame.`
+      : 'The light does not fix the offset at all.')
+  }
+  if (grades.coverage < 1) reasons.push(`The record covers only ${Math.round(100 * covered)} % of the clip's frames.`)
+  return {
+    confidence: Math.min(...Object.values(grades)),
+    evidence: {
+      gain: best.gain, background: best.background,
+      secondBestRatio: ratio, secondBestOffsetSeconds: second && offsetOf(second),
+      edges, beat, reasons,
+    },
+  }
+}
