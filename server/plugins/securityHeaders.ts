@@ -12,7 +12,7 @@ export default defineNitroPlugin((nitro) => {
   nitro.hooks.hook('request', (event) => {
     const nonce = randomBytes(16).toString('base64')
     event.context.nonce = nonce
-    setResponseHeaders(event, securityHeaders({ nonce, dev: import.meta.dev, https }))
+    setResponseHeaders(event, securityHeaders({ nonce, dev: import.meta.dev === true, https }))
   })
   nitro.hooks.hook('render:html', (html, { event }) => {
     const { nonce } = event.context

@@ -1,4 +1,4 @@
 export default defineRoute('POST /api/auth/accept-link', async ({ body }) => {
   await acceptLink(useDatabase(), body)
-  return { ok: true }
+  return { ok: true as const }
 })

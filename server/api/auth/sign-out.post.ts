@@ -1,4 +1,4 @@
 export default defineRoute('POST /api/auth/sign-out', async ({ event }) => {
   await endSession(event)
-  return { ok: true }
+  return { ok: true as const }
 })

@@ -1,4 +1,4 @@
 export default defineRoute('DELETE /api/tokens/:id', async ({ user, params }) => {
   await revokeToken(useDatabase(), user.id, params.id!)
-  return { ok: true }
+  return { ok: true as const }
 })
