@@ -1,0 +1,106 @@
+import { spawn, type ChildProcess } from 'node:child_process'
+import { resolve } from 'node:path'
+import type { Readable } from 'node:stream'
+import { MediaError } from './mediaError'
+
+/**
+ * ffmpeg guesses a file's format from its content, and a playlist can name other files and addresses. Only these
+ * demuxers may open an upload: none of them follows a reference out of the file.
+ */
+const demuxers = 'mov,matroska,avi,mpegts,mpeg,mxf'
+
+/** Pixels of a picture; a few kilobytes can claim a picture that takes gigabytes. */
+export const maximumPixels = 8192 * 4320
+
+const stderrTailBytes = 8192
+const maximumErrorLines = 50
+
+/** Options that go before an input, for ffprobe and ffmpeg alike. */
+export const inputLimits = ['-protocol_whitelist', 'file', '-format_whitelist', demuxers, '-max_pixels', String(maximumPixels)]
+
+/** An edit list can hide frames or repeat them; without it every stored frame is decoded once. Only this family knows the option. */
+export const editListOptions = (container: string): string[] => container.split(',').includes('mov') ? ['-ignore_editlist', '1'] : []
+
+/** As ffmpeg must be told, so that no file name is read as an option or as a protocol. */
+export const inputFile = (path: string) => `file:${resolve(path)}`
+
+export interface ProcessOptions {
+  signal?: AbortSignal
+  /** The process is ended after this long. */
+  timeoutSeconds?: number
+  /** Takes standard output; the process is ended when it throws. Without it, output is dropped. */
+  onOutput?: (stdout: Readable) => Promise<void>
+  /** Takes file descriptor 3, for `-progress pipe:3`. */
+  onSide?: (text: string) => void
+}
+
+export interface ProcessResult {
+  exitCode: number | null
+  stderrTail: string
+  /** Lines on standard error, the first 50. With `-v error` each is an error. */
+  errorLines: string[]
+}
+
+/**
+ * Run ffmpeg or ffprobe to its end. The process is gone when this settles, in every case.
+ *
+ * @throws the signal's reason when aborted, what `onOutput` threw, or MediaError `ffmpeg-missing` or `ffmpeg-timeout`;
+ * a non-zero exit is not an error here, because only the caller can say what it means
+ */
+export async function runProcess(program: 'ffmpeg' | 'ffprobe', args: string[], { signal, timeoutSeconds, onOutput, onSide }: ProcessOptions = {}): Promise<ProcessResult> {
+  signal?.throwIfAborted()
+  const child = spawn(program, args, { stdio: ['ignore', onOutput ? 'pipe' : 'ignore', 'pipe', onSide ? 'pipe' : 'ignore'], windowsHide: true })
+  const exited = exitOf(child, program)
+  const kill = () => child.kill('SIGKILL')
+  let timedOut = false
+  const timer = timeoutSeconds === undefined
+    ? undefined
+    : setTimeout(() => {
+        timedOut = true
+        kill()
+      }, timeoutSeconds * 1000)
+  signal?.addEventListener('abort', kill, { once: true })
+  const stderr = collectStderr(child.stderr!)
+  if (onSide) (child.stdio[3] as Readable).setEncoding('utf8').on('data', onSide)
+  try {
+    // The exit is watched from the start, so that a missing program is not an unhandled rejection while output is read.
+    const [exitCode] = await Promise.all([exited, onOutput?.(child.stdout!)])
+    signal?.throwIfAborted()
+    if (timedOut) throw new MediaError('ffmpeg-timeout', `${program} did not finish within ${timeoutSeconds} s. The file may be damaged: export it again from the camera.`, { stderrTail: stderr.tail() })
+    return { exitCode, stderrTail: stderr.tail(), errorLines: stderr.lines }
+  } catch (error) {
+    signal?.throwIfAborted()
+    throw error
+  } finally {
+    clearTimeout(timer)
+    signal?.removeEventListener('abort', kill)
+    kill()
+    await exited.catch(() => undefined)
+  }
+}
+
+function exitOf(child: ChildProcess, program: string): Promise<number | null> {
+  return new Promise((settle, reject) => {
+    child.once('error', cause => reject(new MediaError('ffmpeg-missing', `${program} cannot be started. Install Debian’s package ffmpeg.`, { cause })))
+    // `close` rather than `exit`: by then standard error has been read to its end.
+    child.once('close', code => settle(code))
+  })
+}
+
+function collectStderr(stream: Readable): { lines: string[], tail: () => string } {
+  const lines: string[] = []
+  let tail = ''
+  let partial = ''
+  stream.setEncoding('utf8')
+  stream.on('data', (text: string) => {
+    tail = (tail + text).slice(-stderrTailBytes)
+    const parts = (partial + text).split('\n')
+    partial = parts.pop()!.slice(-stderrTailBytes)
+    for (const part of parts) keep(part)
+  })
+  stream.on('end', () => keep(partial))
+  function keep(line: string) {
+    if (line.trim() && lines.length < maximumErrorLines) lines.push(line.trim())
+  }
+  return { lines, tail: () => tail }
+}

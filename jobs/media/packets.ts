@@ -1,0 +1,49 @@
+import { editListOptions, inputFile, inputLimits, runProcess } from './ffmpegProcess'
+
+export interface PacketList {
+  /** Presentation time of each packet in ticks of the stream's time base, ascending; the edit list is ignored. */
+  ticks: Float64Array
+  /** The container gives no presentation times, so the order of decoding was taken. */
+  decodeTimesOnly: boolean
+  /** The container gives no times at all: `ticks` just counts. */
+  untimed: boolean
+  /** Compressed size of the video. */
+  bytes: number
+  /** What ffprobe complained about while reading. */
+  errorLines: string[]
+}
+
+/** Go through every packet of the video stream; reads the whole file, decodes nothing. */
+export async function listPackets(path: string, container: string, signal?: AbortSignal): Promise<PacketList> {
+  const presentation: number[] = []
+  const decoding: number[] = []
+  let bytes = 0
+  let partial = ''
+  const add = (line: string) => {
+    if (!line) return
+    const [pts, dts, size] = line.split(',')
+    presentation.push(ticksOf(pts))
+    decoding.push(ticksOf(dts))
+    bytes += Number(size)
+  }
+  const { errorLines } = await runProcess('ffprobe', [
+    '-hide_banner', '-v', 'error', ...inputLimits, ...editListOptions(container),
+    '-select_streams', 'V:0', '-show_entries', 'packet=pts,dts,size', '-of', 'csv=p=0', inputFile(path),
+  ], {
+    signal,
+    onOutput: async (stdout) => {
+      for await (const chunk of stdout.setEncoding('utf8')) {
+        const lines = (partial + chunk).split('\n')
+        partial = lines.pop()!
+        lines.forEach(add)
+      }
+      add(partial)
+    },
+  })
+  const decodeTimesOnly = presentation.some(Number.isNaN)
+  const untimed = decodeTimesOnly && decoding.some(Number.isNaN)
+  const ticks = untimed ? Float64Array.from(decoding.keys()) : Float64Array.from(decodeTimesOnly ? decoding : presentation).sort()
+  return { ticks, decodeTimesOnly, untimed, bytes, errorLines }
+}
+
+const ticksOf = (text: string | undefined) => text === undefined || text === '' || text === 'N/A' ? Number.NaN : Number(text)

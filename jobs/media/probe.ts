@@ -1,0 +1,64 @@
+import { stat } from 'node:fs/promises'
+import type { ClipFacts, CodeRange, Flag, Transfer } from '../../shared/measurement'
+import { clipFlags } from './clipFlags'
+import { resolveRange, resolveTransfer } from './colour'
+import { maximumPixels } from './ffmpegProcess'
+import { MediaError } from './mediaError'
+import { openContainer } from './openContainer'
+import { listPackets } from './packets'
+import { lumaFormats } from './pixelFormats'
+import { probeStreams, type VideoStream } from './streams'
+import { judgeTimes } from './timestamps'
+
+export interface ProbeResult {
+  facts: ClipFacts
+  flags: Flag[]
+  /** Start of exposure of each decoded frame, in display order; the first is 0. */
+  frameTimesSeconds: Float64Array
+}
+
+/**
+ * Find out what a clip is, and refuse what cannot be measured from.
+ *
+ * @throws MediaError whose message says what is wrong with the file and what to do
+ */
+export async function probeClip(path: string, settings: { transfer: Transfer, range: CodeRange }, signal?: AbortSignal): Promise<ProbeResult> {
+  if ((await stat(path)).size === 0) throw new MediaError('file-empty', 'The file is empty. Upload the clip again from the card.')
+  const container = await openContainer(path, signal)
+  const { video, audioTracks } = await probeStreams(path)
+  assertMeasurable(video)
+  const range = resolveRange(settings.range, video.colourRange, lumaFormats[video.pixelFormat].isGray)
+  const transfer = resolveTransfer(settings.transfer, video.colourTransfer)
+  const packets = await listPackets(path, container, signal)
+  const frameCount = packets.ticks.length
+  if (frameCount === 0) throw new MediaError('no-frames', 'The file holds no video frames. Copy the clip again from the card.')
+  const times = packets.untimed ? judgeTimes(packets.ticks, invert(video.frameRates[0]), video.frameRates) : judgeTimes(packets.ticks, video.timeBase, video.frameRates)
+  const { numerator, denominator } = times.frameRate
+  const facts: ClipFacts = {
+    container, codec: video.codec, width: video.width, height: video.height, pixelFormat: video.pixelFormat,
+    bitDepth: lumaFormats[video.pixelFormat].bitDepth,
+    frameRate: times.frameRate, frameRateHz: numerator / denominator,
+    durationSeconds: times.frameTimesSeconds[frameCount - 1] + denominator / numerator,
+    frameCount, containerFrameCount: video.frameCount, variableRate: times.variableRate,
+    range: range.value, rangeSource: range.source, transfer: transfer.value, transferSource: transfer.source, audioTracks,
+    bitsPerPixel: 8 * packets.bytes / (frameCount * video.width * video.height),
+  }
+  assertComplete(facts, video)
+  return { facts, flags: [...range.flags, ...transfer.flags, ...times.flags, ...clipFlags(facts, video, packets)], frameTimesSeconds: times.frameTimesSeconds }
+}
+
+function assertMeasurable({ width, height, pixelFormat, codec }: VideoStream): void {
+  if (!(width > 0 && height > 0)) throw new MediaError('no-video', 'The picture size cannot be found in the file. It may be damaged: upload it again from the card.')
+  if (width * height > maximumPixels) throw new MediaError('picture-too-big', `A picture of ${width}×${height} is too big. Use at most ${Math.floor(maximumPixels / 1e6)} megapixels.`)
+  if (!Object.hasOwn(lumaFormats, pixelFormat)) throw new MediaError('pixel-format', `Light cannot be measured from ${codec} in pixel format ${pixelFormat}. Record or export 8-bit or 10-bit YUV or grey.`)
+}
+
+/** A header that is off by a frame or two is flagged; a file that ends early is refused, with what it should hold. */
+function assertComplete({ frameCount, containerFrameCount, frameRateHz, container, variableRate }: ClipFacts, { durationSeconds }: VideoStream): void {
+  // MOV's stated length follows its edit list; its frame count is exact. Matroska states a length only.
+  const byLength = !container.split(',').includes('mov') && !variableRate && durationSeconds !== null ? Math.round(durationSeconds * frameRateHz) : 0
+  const expected = containerFrameCount ?? byLength
+  if (expected - frameCount > Math.max(2, 0.01 * expected)) throw new MediaError('clip-incomplete', `The file ends early: ${frameCount} of ${expected} frames are there. Copy the clip again from the card and upload it.`)
+}
+
+const invert = (rate: { numerator: number, denominator: number } | undefined) => ({ numerator: rate?.denominator ?? 1, denominator: rate?.numerator ?? 25 })
