@@ -14,7 +14,7 @@ export function parseMail(raw: string): { subject: string, text: string } {
 
 function decodeBody(body: string, encoding: string): string {
   if (encoding === 'base64') return Buffer.from(body, 'base64').toString('utf8')
-  if (encoding === 'quoted-printable') return utf8(decodeHex(body.replaceAll(/[ \t]*=\r?\n/g, '')))
+  if (encoding === 'quoted-printable') return utf8(decodeHex(body.replaceAll(/=[ \t]*\r?\n/g, '')))
   return utf8(body)
 }
 
