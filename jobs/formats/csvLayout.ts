@@ -1,0 +1,99 @@
+import { parse } from 'csv-parse/browser/esm/sync'
+import { RecordError } from './recordError'
+import { scanNumber } from './numberScan'
+
+export interface CsvLayout {
+  /** One character; an empty string when there is one column only. */
+  delimiter: string
+  columnCount: number
+  /** Lines before the first data row. */
+  headerLines: number
+  /** Header text of each column as written; empty when there is no header. */
+  headers: string[]
+  /** Header text without its unit. */
+  names: string[]
+  units: (string | null)[]
+}
+
+const delimiters = ['\t', ';', ',']
+const quote = 60
+
+/**
+ * Find out how a DAQ text file is laid out: what separates its columns, where its numbers begin, what its columns are
+ * called. Numbers begin at the first two lines in a row that are all numbers (or empty) in the same two or more columns;
+ * whatever lies before is preamble, its last line the header, or the last but one when a row of units follows.
+ *
+ * @param lines the file's beginning, without line ends; the last one must be whole
+ * @throws RecordError `no-data`
+ */
+export function findCsvLayout(lines: readonly string[]): CsvLayout {
+  for (const delimiter of [...delimiters, '']) {
+    const headerLines = firstDataLine(lines, delimiter)
+    if (headerLines < 0 || isDecimalComma(lines.slice(0, headerLines), delimiter)) continue
+    const columnCount = splitData(lines[headerLines], delimiter).length
+    return { delimiter, columnCount, headerLines, ...readHeader(lines.slice(0, headerLines), delimiter, columnCount) }
+  }
+  const shown = lines.find(line => line.trim()) ?? ''
+  throw new RecordError('no-data', `No rows of numbers were found; the first line reads “${shown.slice(0, quote)}”. Export the record as CSV or TSV with one row a sample; a time column must hold seconds, not clock times.`)
+}
+
+/** Rows like "1,5" under a header without a comma are one column with decimal commas, not two columns. */
+function isDecimalComma(preamble: readonly string[], delimiter: string): boolean {
+  const header = preamble.findLast(line => line.trim())
+  return delimiter === ',' && header !== undefined && !header.includes(',')
+}
+
+/** Cells of a data row; an empty last cell (a row that ends in a delimiter) does not count. */
+function splitData(line: string, delimiter: string): string[] {
+  const cells = delimiter ? line.split(delimiter) : [line]
+  if (cells.length > 1 && !cells.at(-1)!.trim()) cells.pop()
+  return cells
+}
+
+function firstDataLine(lines: readonly string[], delimiter: string): number {
+  const filled = lines.flatMap((line, i) => line.trim() ? [i] : [])
+  const columns = filled.map(i => numericColumns(lines[i], delimiter))
+  const least = delimiter ? 2 : 1
+  // A file with a single data row is told so later, so its last line may stand alone.
+  const at = columns.findIndex((count, i) => count >= least && (count === columns[i + 1] || i === columns.length - 1))
+  return at < 0 ? -1 : filled[at]
+}
+
+/** Number of columns of a line of numbers; 0 when it is something else. */
+function numericColumns(line: string, delimiter: string): number {
+  const cells = splitData(line, delimiter)
+  const bytes = new TextEncoder()
+  const values = cells.map((cell) => {
+    const text = bytes.encode(cell)
+    return cell.trim() === '' || /^\s*nan\s*$/i.test(cell) ? null : scanNumber(text, 0, text.length)
+  })
+  const numbers = values.filter(value => value !== null)
+  return numbers.length && !numbers.some(Number.isNaN) ? cells.length : 0
+}
+
+function readHeader(preamble: readonly string[], delimiter: string, columnCount: number): Pick<CsvLayout, 'headers' | 'names' | 'units'> {
+  const [last, before] = preamble.filter(line => line.trim()).reverse().map(line => splitHeader(line, delimiter))
+  const fits = (cells: string[] | undefined): cells is string[] => cells !== undefined && cells.length >= columnCount && cells.slice(columnCount).every(cell => !cell)
+  if (!fits(last)) return { headers: [], names: [], units: Array.from({ length: columnCount }, () => null) }
+  const hasUnitRow = last.every(cell => !cell || isUnit(cell)) && fits(before)
+  const headers = (hasUnitRow ? before : last).slice(0, columnCount)
+  const split = headers.map(splitUnit)
+  return { headers, names: split.map(({ name }) => name), units: split.map(({ unit }, i) => unit ?? (hasUnitRow && last[i] ? bare(last[i]) : null)) }
+}
+
+function splitHeader(line: string, delimiter: string): string[] {
+  const text = line.replace(/^\uFEFF?[#%]?\s*/, '')
+  if (!delimiter) return [text.replace(/^"|"$/g, '').trim()]
+  const rows = parse(text, { delimiter, relax_quotes: true, relax_column_count: true, trim: true }) as string[][]
+  return rows[0] ?? []
+}
+
+const unitPattern = /^(?:s|sec|ms|µs|us|min|V|mV|µV|A|mA|N|kN|lbf|g|gn|m\/s²|m\/s\^2|m\/s2|mm\/s²|m\/s|mm|µm|m|Pa|W|lx|lm|Hz|%|EU|-|1|°C)$/i
+const bare = (text: string) => text.replace(/^[[(]|[\])]$/g, '').trim()
+const isUnit = (text: string) => unitPattern.test(bare(text))
+
+/** "Force [N]", "Force (N)" or "Force / N". */
+function splitUnit(header: string): { name: string, unit: string | null } {
+  const [, name, bracketed, slashed] = /^(.*\S)\s*(?:[[(]([^\])]*)[\])]|\s\/\s+(\S+))$/.exec(header) ?? []
+  return name === undefined ? { name: header, unit: null } : { name, unit: bracketed?.trim() || slashed || null }
+}
