@@ -1,9 +1,9 @@
 import type { Alignment, AlignmentEvidence } from '../../shared/measurement'
-import { coarseCandidates } from './alignCoarse'
+import { coarseCandidates, type CoarseCandidate } from './alignCoarse'
 import { judgeAlignment } from './alignConfidence'
 import { searchGrid } from './alignGrid'
 import { polish, type Polished } from './alignPolish'
-import { badness, median, offsetOf, type AlignProblem, type AlignSolution } from './alignProblem'
+import { explained, median, offsetOf, type AlignProblem, type AlignSolution } from './alignProblem'
 import { beatAmplitude, lampTones } from './lampTones'
 import { createLightIntegrals, predictFrameLight } from './lightPrediction'
 
@@ -31,7 +31,18 @@ export interface AlignResult extends Alignment {
   predicted: Float64Array
 }
 
+interface FrameRange {
+  fromFrame: number
+  toFrame: number
+}
+
+interface Spanned {
+  solution: AlignSolution
+  range: FrameRange
+}
+
 const mostCandidates = 12
+const mostPolished = 24
 /** Longer clips are aligned on a stretch of this length first, which is then doubled up to the whole. */
 const firstSpanSeconds = 60
 
@@ -58,7 +69,7 @@ function pose(input: AlignInput): AlignProblem {
 }
 
 /** Frames of a candidate that the record covers. */
-function coveredRange(problem: AlignProblem, offsetSeconds: number): { fromFrame: number, toFrame: number } {
+function coveredRange(problem: AlignProblem, offsetSeconds: number): FrameRange {
   const { times, recordSeconds, exposureSeconds } = problem
   let fromFrame = 0
   while (fromFrame < times.length - 1 && times[fromFrame] + offsetSeconds < 0) fromFrame++
@@ -68,7 +79,7 @@ function coveredRange(problem: AlignProblem, offsetSeconds: number): { fromFrame
 }
 
 /** The stretch of at most `seconds` in the range whose light varies most. */
-function liveliestSpan(problem: AlignProblem, range: { fromFrame: number, toFrame: number }, seconds: number) {
+function liveliestSpan(problem: AlignProblem, range: FrameRange, seconds: number): FrameRange {
   const { times, light } = problem
   if (times[range.toFrame - 1] - times[range.fromFrame] <= seconds) return range
   let best = range
@@ -96,35 +107,30 @@ function gridStep(problem: AlignProblem): number {
 }
 
 /** Grid minima of one coarse candidate on its first stretch. */
-function expand(problem: AlignProblem, candidate: { offsetSeconds: number, driftPpm: number, stepSeconds: number }, step: number) {
-  const covered = coveredRange(problem, candidate.offsetSeconds)
-  const range = liveliestSpan(problem, covered, firstSpanSeconds)
+function expand(problem: AlignProblem, candidate: CoarseCandidate, step: number): Spanned[] {
+  const range = liveliestSpan(problem, coveredRange(problem, candidate.offsetSeconds), firstSpanSeconds)
   const pivotSeconds = (problem.times[range.fromFrame] + problem.times[range.toFrame - 1]) / 2
-  let middleSeconds = candidate.offsetSeconds + (1 + candidate.driftPpm * 1e-6) * pivotSeconds
-  const quarter = problem.frameSeconds / 4
-  if (candidate.stepSeconds > quarter) {
-    const rough = searchGrid(problem, { ...range, middleSeconds, pivotSeconds, halfRangeSeconds: 2 * candidate.stepSeconds, stepSeconds: quarter, driftPpm: 0, halfRangePpm: 0 }, 1)
-    if (rough.length) middleSeconds = rough[0].middleSeconds
-  }
-  const halfRangeSeconds = Math.max(problem.frameSeconds * 0.6, 2 * Math.min(candidate.stepSeconds, quarter))
+  const middleSeconds = candidate.offsetSeconds + (1 + candidate.driftPpm * 1e-6) * pivotSeconds
+  const halfRangeSeconds = Math.max(problem.frameSeconds * 0.6, 2 * candidate.stepSeconds)
   const area = { ...range, middleSeconds, pivotSeconds, halfRangeSeconds, stepSeconds: step, driftPpm: 0, halfRangePpm: problem.maxDriftPpm }
-  return searchGrid(problem, area, 6).map(solution => ({ solution, range }))
+  return searchGrid(problem, area, 10).map(solution => ({ solution, range }))
 }
 
-/** Polish on the first stretch, then on stretches twice as long, up to all covered frames. */
-function settle(problem: AlignProblem, start: AlignSolution, range: { fromFrame: number, toFrame: number }): Polished {
-  let polished = polish(problem, start, range)
-  let span = range
+/** From a solution on its stretch to one on all covered frames, doubling the stretch; a small grid keeps it in its minimum. */
+function settle(problem: AlignProblem, start: { solution: Polished, range: FrameRange }, step: number): Polished {
+  let { solution, range } = start
   for (;;) {
-    const covered = coveredRange(problem, offsetOf(polished))
-    if (span.fromFrame <= covered.fromFrame && span.toFrame >= covered.toFrame) return polished
-    const more = Math.ceil((span.toFrame - span.fromFrame) / 2)
-    const next = { fromFrame: Math.max(covered.fromFrame, span.fromFrame - more), toFrame: Math.min(covered.toFrame, span.toFrame + more) }
-    if (next.toFrame - next.fromFrame <= span.toFrame - span.fromFrame) return polished
+    const covered = coveredRange(problem, offsetOf(solution))
+    if (range.fromFrame <= covered.fromFrame && range.toFrame >= covered.toFrame) return solution
+    const more = Math.ceil((range.toFrame - range.fromFrame) / 2)
+    const next = { fromFrame: Math.max(covered.fromFrame, range.fromFrame - more), toFrame: Math.min(covered.toFrame, range.toFrame + more) }
+    if (next.toFrame - next.fromFrame <= range.toFrame - range.fromFrame) return solution
     const pivotSeconds = (problem.times[next.fromFrame] + problem.times[next.toFrame - 1]) / 2
-    const middleSeconds = polished.middleSeconds + (1 + polished.driftPpm * 1e-6) * (pivotSeconds - polished.pivotSeconds)
-    polished = polish(problem, { ...polished, middleSeconds, pivotSeconds }, next)
-    span = next
+    const middleSeconds = solution.middleSeconds + (1 + solution.driftPpm * 1e-6) * (pivotSeconds - solution.pivotSeconds)
+    const halfRangePpm = Math.min(4 * solution.driftDeviationPpm + 0.2, problem.maxDriftPpm)
+    const area = { ...next, middleSeconds, pivotSeconds, halfRangeSeconds: 2 * step, stepSeconds: step / 2, driftPpm: solution.driftPpm, halfRangePpm }
+    solution = polish(problem, searchGrid(problem, area, 1)[0] ?? { ...solution, middleSeconds, pivotSeconds }, next)
+    range = next
   }
 }
 
@@ -136,22 +142,26 @@ function distance(problem: AlignProblem, a: AlignSolution, b: AlignSolution): nu
   return Math.max(Math.abs(startGap), Math.abs(endGap))
 }
 
-function solve(problem: AlignProblem): { best: Polished, second: Polished | null, noiseVariance: number } {
+/** Best first, those within `apart` of a better one left out. */
+function distinct<T extends { solution: AlignSolution }>(problem: AlignProblem, entries: T[], apart: number): T[] {
+  const kept: T[] = []
+  for (const entry of entries.sort((a, b) => explained(problem, b.solution) - explained(problem, a.solution))) {
+    if (!kept.some(other => distance(problem, other.solution, entry.solution) < apart)) kept.push(entry)
+  }
+  return kept
+}
+
+function solve(problem: AlignProblem): { best: Polished, second: Polished | null } {
   const step = gridStep(problem)
   const candidates = coarseCandidates(problem, mostCandidates)
-  const expanded = candidates.flatMap(candidate => expand(problem, candidate, step))
-  if (!expanded.length) throw new AlignError('Clip and record do not overlap enough to be aligned; check that they belong together, or set offset and drift by hand.')
-  const floor = (0.01 ** 2) * Math.max(problem.lightVariance, Number.MIN_VALUE)
-  const noiseOf = (solutions: AlignSolution[]) => Math.max(floor, Math.min(...solutions.map(solution => solution.squares / solution.frames)))
-  const gridNoise = noiseOf(expanded.map(entry => entry.solution))
-  expanded.sort((a, b) => badness(problem, a.solution, gridNoise) - badness(problem, b.solution, gridNoise))
-  const polished = expanded.slice(0, 16).map(entry => settle(problem, entry.solution, entry.range))
-  const noiseVariance = noiseOf(polished)
-  polished.sort((a, b) => badness(problem, a, noiseVariance) - badness(problem, b, noiseVariance))
+  const minima = distinct(problem, candidates.flatMap(candidate => expand(problem, candidate, step)), step)
+  if (!minima.length) throw new AlignError('Clip and record do not overlap enough to be aligned; check that they belong together, or set offset and drift by hand.')
+  const polished = minima.slice(0, mostPolished).map(({ solution, range }) => ({ solution: polish(problem, solution, range), range }))
   const fastest = Math.max(1, ...problem.tones.map(tone => tone.frequencyHz))
   const elsewhere = Math.min(0.3 * problem.frameSeconds, Math.max(0.02 * problem.frameSeconds, 0.5 / fastest))
-  const best = polished[0]
-  return { best, second: polished.find(other => distance(problem, best, other) > elsewhere) ?? null, noiseVariance }
+  const whole = distinct(problem, polished, step).slice(0, 6).map(entry => ({ solution: settle(problem, entry, step) }))
+  const [best, second] = distinct(problem, whole, elsewhere)
+  return { best: best.solution, second: second?.solution ?? null }
 }
 
 /**
@@ -169,7 +179,7 @@ function solve(problem: AlignProblem): { best: Polished, second: Polished | null
  */
 export function alignClip(input: AlignInput): AlignResult {
   const problem = pose(input)
-  const { best, second, noiseVariance } = solve(problem)
+  const { best, second } = solve(problem)
   const timing = { frameTimesSeconds: input.frameTimesSeconds, exposureSeconds: input.exposureSeconds, offsetSeconds: offsetOf(best), driftPpm: best.driftPpm }
   const predicted = predictFrameLight(problem.integrals, timing)
   let lowest = Number.POSITIVE_INFINITY
@@ -180,6 +190,6 @@ export function alignClip(input: AlignInput): AlignResult {
     if (predicted[k] > highest) highest = predicted[k]
   }
   const residual = highest > lowest ? Math.min(1, Math.sqrt(best.squares / best.frames) / (highest - lowest)) : 1
-  const { confidence, evidence } = judgeAlignment(problem, { best, second, noiseVariance, residual })
+  const { confidence, evidence } = judgeAlignment(problem, { best, second, residual })
   return { offsetSeconds: timing.offsetSeconds, driftPpm: timing.driftPpm, residual, confidence, method: 'light', version: 1, evidence, predicted }
 }

@@ -1,4 +1,4 @@
-import { fitGain, type AlignProblem } from './alignProblem'
+import { explained, fitGain, type AlignProblem } from './alignProblem'
 import { beatAmplitude } from './lampTones'
 import { windowMean } from './lightPrediction'
 import { fft, inverseFft, powerOfTwo } from './spectrum'
@@ -6,8 +6,8 @@ import { fft, inverseFft, powerOfTwo } from './spectrum'
 export interface CoarseCandidate {
   offsetSeconds: number
   driftPpm: number
-  /** Unexplained share of the light's variance, uncovered frames counted at a tenth each. */
-  cost: number
+  /** See `explained`. */
+  score: number
   /** Step of the search, seconds: the offset is good to about this. */
   stepSeconds: number
 }
@@ -18,7 +18,9 @@ interface Series {
   squares: Float64Array
 }
 
-const uncoveredCost = 0.1
+/** Overlap searched, as a share of the shorter one of clip and record. */
+const leastOverlap = 0.2
+/** Bound on phases × drifts × N·log2 N of the transforms. */
 const transformBudget = 4e7
 
 function prefixed(values: Float64Array): Series {
@@ -71,8 +73,8 @@ function searchPlan(problem: AlignProblem) {
   return { step, framesPerStep, phases, drifts, size }
 }
 
-/** Costs of all lags of one predicted series; lag l puts light sample 0 on prediction sample l. */
-function scanLags(light: Series, spectrum: { re: Float64Array, im: Float64Array }, predicted: Series, size: number, visit: (lag: number, cost: number) => void): void {
+/** Scores of all lags of one predicted series; lag l puts light sample 0 on prediction sample l. */
+function scanLags(problem: AlignProblem, light: Series, spectrum: { re: Float64Array, im: Float64Array }, predicted: Series, size: number, visit: (lag: number, score: number) => void): void {
   const n = light.values.length
   const m = predicted.values.length
   const re = new Float64Array(size)
@@ -85,8 +87,7 @@ function scanLags(light: Series, spectrum: { re: Float64Array, im: Float64Array 
     re[k] = real
   }
   inverseFft(re, im)
-  const least = Math.max(12, 0.2 * Math.min(n, m))
-  const total = light.squares[n]
+  const least = Math.max(12, leastOverlap * Math.min(n, m))
   for (let lag = -n + 1; lag < m; lag++) {
     const from = Math.max(0, -lag)
     const to = Math.min(n, m - lag)
@@ -94,11 +95,10 @@ function scanLags(light: Series, spectrum: { re: Float64Array, im: Float64Array 
     if (count < least) continue
     const y = light.sum[to] - light.sum[from]
     const yy = light.squares[to] - light.squares[from]
-    if (yy - y * y / count < 0.1 * total * Math.min(1, m / n)) continue
     const w = predicted.sum[to + lag] - predicted.sum[from + lag]
     const ww = predicted.squares[to + lag] - predicted.squares[from + lag]
     const fit = fitGain(count, w, ww, y, yy, re[(lag + size) % size])
-    visit(lag, (fit.squares / total * n + uncoveredCost * (n - count)) / n)
+    visit(lag, explained(problem, { ...fit, frames: count }) * problem.light.length / n)
   }
 }
 
@@ -126,11 +126,11 @@ export function coarseCandidates(problem: AlignProblem, most: number): CoarseCan
       if (length < 2) continue
       const values = new Float64Array(length)
       for (let j = 0; j < length; j++) values[j] = windowMean(problem.integrals, start + j * stretched, window)
-      scanLags(light, spectrum, prefixed(values), size, (lag, cost) => {
+      scanLags(problem, light, spectrum, prefixed(values), size, (lag, score) => {
         const middle = lag * stretched + start + driftPpm * 1e-6 * problem.times[problem.times.length - 1] / 2
         const cell = Math.round(middle / step * 2)
         const kept = best.get(cell)
-        if (!kept || cost < kept.cost) best.set(cell, { offsetSeconds: lag * stretched + start, driftPpm, cost, stepSeconds: step / phases })
+        if (!kept || score > kept.score) best.set(cell, { offsetSeconds: lag * stretched + start, driftPpm, score, stepSeconds: step / phases })
       })
     }
   }
@@ -141,7 +141,7 @@ export function coarseCandidates(problem: AlignProblem, most: number): CoarseCan
 function separated(cells: Map<number, CoarseCandidate>, most: number): CoarseCandidate[] {
   const taken = new Set<number>()
   const kept: CoarseCandidate[] = []
-  for (const [cell, candidate] of [...cells].sort((a, b) => a[1].cost - b[1].cost)) {
+  for (const [cell, candidate] of [...cells].sort((a, b) => b[1].score - a[1].score)) {
     if (kept.length >= most) break
     if (!taken.has(cell - 1) && !taken.has(cell + 1)) {
       taken.add(cell)

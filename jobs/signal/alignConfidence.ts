@@ -1,13 +1,12 @@
 import type { AlignmentEvidence } from '../../shared/measurement'
 import type { Polished } from './alignPolish'
-import { offsetOf, type AlignProblem } from './alignProblem'
+import { explained, offsetOf, type AlignProblem } from './alignProblem'
 import { beatAmplitude } from './lampTones'
 import { windowMean } from './lightPrediction'
 
 interface Judged {
   best: Polished
   second: Polished | null
-  noiseVariance: number
   residual: number
 }
 
@@ -17,12 +16,13 @@ function grade(value: number, bad: number, good: number): number {
   return Math.min(1, Math.max(0, (Math.log(Math.max(value, 1e-12)) - Math.log(bad)) / (Math.log(good) - Math.log(bad))))
 }
 
-/** Lamp edges and level steps in the covered part of the record: changes of the 0.1 s mean by 15 % of the highest level. */
+/** Lamp edges and level steps in the covered part of the record: changes of a mean over eight periods by 15 % of the highest level. */
 function countEdges(problem: AlignProblem, best: Polished): number {
   const { integrals, times, recordSeconds } = problem
   const from = Math.max(0, offsetOf(best))
   const to = Math.min(recordSeconds, offsetOf(best) + (1 + best.driftPpm * 1e-6) * times[times.length - 1])
-  const span = 0.1
+  const slowest = Math.min(...problem.tones.map(tone => tone.frequencyHz))
+  const span = Math.max(0.1, Number.isFinite(slowest) ? 8 / slowest : 0)
   const changes: number[] = []
   let highest = 0
   for (let time = from + span; time < to - span; time += span / 5) {
@@ -78,9 +78,7 @@ export function judgeAlignment(problem: AlignProblem, judged: Judged): { confide
   const highest = problem.light.reduce((most, value) => Math.max(most, value - best.background), 0)
   const strongest = Math.max(0, ...problem.tones.map(tone => beatAmplitude(tone, problem.exposureSeconds))) * highest
   const beat = strongest > Math.max(1.5 * residualRms, 0.0015 * highest)
-  // Below a tenth of a percent of the span the two fits are equally good for every purpose.
-  const floor = Math.sqrt(judged.noiseVariance) * 1e-2
-  const ratio = second ? Math.max(1, (Math.sqrt(second.squares / second.frames) + floor) / (residualRms + floor)) : null
+  const ratio = second ? Math.max(1, Math.exp(explained(problem, best) - explained(problem, second))) : null
   const precisionFrames = best.middleDeviationSeconds / problem.frameSeconds
   const covered = best.frames / problem.light.length
   const grades = {

@@ -100,7 +100,7 @@ function evaluate(segments: Segments, reach: number, area: GridArea, column: num
     middleSeconds: area.middleSeconds + column * area.stepSeconds,
     pivotSeconds: area.pivotSeconds,
     driftPpm: area.driftPpm + drift * 1e6,
-    gain: fit.gain, background: fit.background, frames: n, squares: fit.squares,
+    frames: n, ...fit,
   }
 }
 

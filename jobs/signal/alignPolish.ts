@@ -84,15 +84,14 @@ export function polish(problem: AlignProblem, start: AlignSolution, range: Range
       const step = solveLinear(damped, right)
       if (!step) break
       const largest = Math.max(Math.abs(step[2]), Math.abs(step[3]))
+      if (largest < 1e-6) return { ...current, ...deviations(problem, range, current, driftScale) }
       const shrink = largest > 0.25 ? 0.25 / largest : 1
       const next = evaluateAt(problem, range, current.middleSeconds + shrink * step[2] * frameSeconds, current.pivotSeconds, current.driftPpm + shrink * step[3] * driftScale)
       const better = (next.squares + prior(next.driftPpm)) / next.frames < (current.squares + prior(current.driftPpm)) / current.frames
       if (better && next.frames > 0.5 * current.frames && Math.abs(next.driftPpm) <= 1.5 * problem.maxDriftPpm) {
         moved = true
         damping = Math.max(damping / 5, 1e-9)
-        const settled = largest < 1e-7
         current = next
-        if (settled) pass = 40
       } else {
         damping *= 6
       }

@@ -24,15 +24,18 @@ export interface AlignSolution {
   driftPpm: number
   gain: number
   background: number
-  /** Frames whose window lies in the record, and their summed squared error. */
+  /** Frames whose window lies in the record, their summed squared error, and that of their light about its mean. */
   frames: number
   squares: number
+  coveredSquares: number
 }
 
 export interface LinearFit {
   gain: number
   background: number
   squares: number
+  /** Squares about the mean. */
+  coveredSquares: number
 }
 
 /** y ≈ gain·w + background from sums; a gain below 0 is refused and leaves the variance. */
@@ -40,18 +43,19 @@ export function fitGain(n: number, w: number, ww: number, y: number, yy: number,
   const sww = ww - w * w / n
   const syy = Math.max(0, yy - y * y / n)
   const swy = wy - w * y / n
-  if (!(sww > 1e-12 * ww) || swy <= 0) return { gain: 0, background: y / n, squares: syy }
+  if (!(sww > 1e-12 * ww) || swy <= 0) return { gain: 0, background: y / n, squares: syy, coveredSquares: syy }
   const gain = swy / sww
-  return { gain, background: (y - gain * w) / n, squares: Math.max(0, syy - gain * swy) }
+  return { gain, background: (y - gain * w) / n, squares: Math.max(0, syy - gain * swy), coveredSquares: syy }
 }
 
 /**
- * Badness of a solution for comparing different overlaps: squared error in units of the noise, and for every frame that
- * the record does not cover what not knowing it costs (log of spread over noise).
+ * What a solution explains, in nats per frame of the clip: ½·n·ln(variance of the covered light / squared error) over all
+ * frames. A level part of the clip explains nothing, however well it fits, and neither does what the record does not
+ * cover, so that solutions of different overlap compare fairly. Errors below 0.1 % of the light's spread count as that.
  */
-export function badness(problem: AlignProblem, solution: { frames: number, squares: number }, noiseVariance: number): number {
-  const unknown = problem.light.length - solution.frames
-  return (solution.squares / noiseVariance + unknown * Math.log(Math.max(problem.lightVariance / noiseVariance, 2))) / problem.light.length
+export function explained(problem: AlignProblem, solution: { frames: number, squares: number, coveredSquares: number }): number {
+  const floor = 1e-6 * problem.lightVariance * solution.frames
+  return 0.5 * solution.frames * Math.log((solution.coveredSquares + floor) / (solution.squares + floor)) / problem.light.length
 }
 
 export function offsetOf(solution: AlignSolution): number {

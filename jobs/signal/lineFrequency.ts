@@ -1,8 +1,10 @@
 import { fitSine3, fitSine4, frequencyDeviationHz, SineFitError, wrapDegrees, type SineFit } from './sineFit'
 
 export interface HarmonicStretch {
-  first: number
-  count: number
+  /** Samples of the stretch alone. */
+  samples: ArrayLike<number>
+  /** Record sample that element 0 is. */
+  origin: number
   guessHz: number
 }
 
@@ -19,16 +21,16 @@ interface Single {
   deviationHz: number
 }
 
-function fitEach(samples: Float32Array, sampleRateHz: number, stretches: HarmonicStretch[]): Single[] {
+function fitEach(sampleRateHz: number, stretches: HarmonicStretch[]): Single[] {
   return stretches.map((stretch, index) => {
     let fit: SineFit
     try {
-      fit = fitSine4(samples, sampleRateHz, stretch.guessHz, stretch)
+      fit = fitSine4(stretch.samples, sampleRateHz, stretch.guessHz, stretch)
     } catch (error) {
       if (!(error instanceof SineFitError)) throw error
-      fit = fitSine3(samples, sampleRateHz, stretch.guessHz, stretch)
+      fit = fitSine3(stretch.samples, sampleRateHz, stretch.guessHz, stretch)
     }
-    return { index, fit, deviationHz: Math.max(frequencyDeviationHz(fit, stretch.count, sampleRateHz), 1e-9 * fit.frequencyHz) }
+    return { index, fit, deviationHz: Math.max(frequencyDeviationHz(fit, stretch.samples.length, sampleRateHz), 1e-9 * fit.frequencyHz) }
   })
 }
 
@@ -60,13 +62,14 @@ function phaseClasses(phases: { time: number, phaseDeg: number }[]): { time: num
  * phase. Used only when the pooled frequency is good enough to count whole cycles between them and the result agrees
  * with it; otherwise (generator restarted between regimes) the pooled one stays.
  */
-function sharpen(samples: Float32Array, sampleRateHz: number, stretches: HarmonicStretch[], group: Single[], pooled: { frequencyHz: number, deviationHz: number }) {
-  const middles = group.map(single => (stretches[single.index].first + (stretches[single.index].count - 1) / 2) / sampleRateHz)
+function sharpen(sampleRateHz: number, stretches: HarmonicStretch[], group: Single[], pooled: { frequencyHz: number, deviationHz: number }) {
+  const middles = group.map(single => (stretches[single.index].origin + (stretches[single.index].samples.length - 1) / 2) / sampleRateHz)
   const centre = middles.reduce((sum, time) => sum + time, 0) / middles.length
   const span = Math.max(...middles) - Math.min(...middles)
   if (pooled.deviationHz * span * 360 > 6) return pooled
   const phases = group.map((single, k) => {
-    const fit = fitSine3(samples, sampleRateHz, pooled.frequencyHz, stretches[single.index])
+    const stretch = stretches[single.index]
+    const fit = fitSine3(stretch.samples, sampleRateHz, pooled.frequencyHz, stretch)
     // Phase at the line's middle, so that the lever from sample 0 is not in it.
     return { time: middles[k] - centre, phaseDeg: wrapDegrees(fit.phaseDeg + 360 * ((pooled.frequencyHz * centre) % 1)) }
   })
@@ -88,7 +91,7 @@ function sharpen(samples: Float32Array, sampleRateHz: number, stretches: Harmoni
   if (freedom < 0 || denominator === 0) return pooled
   const slope = numerator / denominator
   for (const entry of centred) squares += (entry.phaseDeg - slope * entry.time) ** 2
-  const own = Math.max(...group.map(single => Math.SQRT2 * single.fit.rmsResidual / single.fit.amplitude / Math.sqrt(stretches[single.index].count)))
+  const own = Math.max(...group.map(single => Math.SQRT2 * single.fit.rmsResidual / single.fit.amplitude / Math.sqrt(stretches[single.index].samples.length)))
   const scatterDeg = Math.max(freedom > 0 ? Math.sqrt(squares / freedom) : 0, own * 180 / Math.PI)
   const deviationHz = scatterDeg / 360 / Math.sqrt(denominator)
   const change = slope / 360
@@ -107,8 +110,8 @@ function sharpen(samples: Float32Array, sampleRateHz: number, stretches: Harmoni
  * @param plannedFrequenciesHz a line that cannot be told from a planned frequency (four standard deviations) takes it
  * @returns lines in order of frequency
  */
-export function findLineFrequencies(samples: Float32Array, sampleRateHz: number, stretches: HarmonicStretch[], plannedFrequenciesHz: number[] = []): LineFrequency[] {
-  const singles = fitEach(samples, sampleRateHz, stretches).sort((a, b) => a.fit.frequencyHz - b.fit.frequencyHz)
+export function findLineFrequencies(sampleRateHz: number, stretches: HarmonicStretch[], plannedFrequenciesHz: number[] = []): LineFrequency[] {
+  const singles = fitEach(sampleRateHz, stretches).sort((a, b) => a.fit.frequencyHz - b.fit.frequencyHz)
   const groups: Single[][] = []
   for (const single of singles) {
     const last = groups.at(-1)?.at(-1)
@@ -117,7 +120,7 @@ export function findLineFrequencies(samples: Float32Array, sampleRateHz: number,
     else groups.push([single])
   }
   return groups.map((group) => {
-    const line = sharpen(samples, sampleRateHz, stretches, group, pool(group))
+    const line = sharpen(sampleRateHz, stretches, group, pool(group))
     const planned = plannedFrequenciesHz.find(frequency => Math.abs(frequency - line.frequencyHz) < 4 * line.deviationHz)
     return { frequencyHz: planned ?? line.frequencyHz, deviationHz: line.deviationHz, members: group.map(single => single.index).sort((a, b) => a - b) }
   })

@@ -1,6 +1,7 @@
 import type { Flag, Regime } from '../../shared/measurement'
 import { findLineFrequencies } from './lineFrequency'
 import { refineBoundaries, type LampStretch } from './regimeBoundaries'
+import { removeTones } from './removeTones'
 import { findRuns } from './regimeRuns'
 import { fitSine3, wrapDegrees, type SineFit } from './sineFit'
 
@@ -103,12 +104,21 @@ function toRegime(samples: Float32Array, sampleRateHz: number, entry: Fitted, co
   }
 }
 
+/** Frequency and phase from the stretch without ripple, level and residual from the stretch as it is. */
 function fitStretches(samples: Float32Array, sampleRateHz: number, stretches: LampStretch[], planned: number[]): Fitted[] {
   const harmonic = stretches.filter(stretch => stretch.kind === 'harmonic')
-  const parts = harmonic.map(stretch => ({ first: stretch.first, count: stretch.end - stretch.first, guessHz: stretch.frequencyHz! }))
+  const parts = harmonic.map((stretch) => {
+    const range = { first: stretch.first, count: stretch.end - stretch.first }
+    return { samples: removeTones(samples, sampleRateHz, range, stretch.frequencyHz!), origin: stretch.first, guessHz: stretch.frequencyHz! }
+  })
   const fits = new Map<LampStretch, SineFit>()
-  for (const line of findLineFrequencies(samples, sampleRateHz, parts, planned)) {
-    for (const member of line.members) fits.set(harmonic[member], fitSine3(samples, sampleRateHz, line.frequencyHz, parts[member]))
+  for (const line of findLineFrequencies(sampleRateHz, parts, planned)) {
+    for (const member of line.members) {
+      const stretch = harmonic[member]
+      const clean = fitSine3(parts[member].samples, sampleRateHz, line.frequencyHz, parts[member])
+      const whole = fitSine3(samples, sampleRateHz, line.frequencyHz, { first: stretch.first, count: stretch.end - stretch.first })
+      fits.set(stretch, { ...clean, rmsResidual: whole.rmsResidual })
+    }
   }
   return stretches.map((stretch) => {
     const fit = fits.get(stretch) ?? null

@@ -26,6 +26,8 @@ export interface Stretch {
   first?: number
   /** Number of samples, default all that follow `first`. */
   count?: number
+  /** Record sample that element 0 of the array is, default 0: time and phase count from record sample 0. */
+  origin?: number
 }
 
 /** Degrees brought into (−180, 180]. */
@@ -66,11 +68,11 @@ function bounds(samples: ArrayLike<number>, sampleRateHz: number, frequencyHz: n
   if (!(frequencyHz > 0 && frequencyHz < sampleRateHz / 2)) {
     throw new SineFitError(`A sine of ${frequencyHz} Hz cannot be fitted at ${sampleRateHz} samples a second: it must lie between 0 and half the sample rate.`)
   }
-  return { first, count }
+  return { first, count, origin: stretch.origin ?? 0 }
 }
 
 /** cosine and sine coefficients about the stretch's middle → a `SineFit` about sample 0. */
-function describe(samples: ArrayLike<number>, sampleRateHz: number, frequencyHz: number, first: number, count: number, middle: { a: number, b: number, offset: number }): SineFit {
+function describe(samples: ArrayLike<number>, sampleRateHz: number, frequencyHz: number, { first, count, origin }: Required<Stretch>, middle: { a: number, b: number, offset: number }): SineFit {
   const { a, b, offset } = middle
   const radiansPerSample = 2 * Math.PI * frequencyHz / sampleRateHz
   let squares = 0
@@ -78,7 +80,7 @@ function describe(samples: ArrayLike<number>, sampleRateHz: number, frequencyHz:
     const error = samples[index] - offset - a * cos - b * sin
     squares += error * error
   })
-  const angle = radiansPerSample * (first + (count - 1) / 2)
+  const angle = radiansPerSample * (origin + first + (count - 1) / 2)
   const cosine = a * Math.cos(angle) - b * Math.sin(angle)
   const sine = a * Math.sin(angle) + b * Math.cos(angle)
   return {
@@ -122,9 +124,9 @@ function solveMiddle(samples: ArrayLike<number>, first: number, count: number, r
  * Source: IEEE Std 1057, annex A (three-parameter fit).
  */
 export function fitSine3(samples: ArrayLike<number>, sampleRateHz: number, frequencyHz: number, stretch: Stretch = {}): SineFit {
-  const { first, count } = bounds(samples, sampleRateHz, frequencyHz, stretch, 3)
-  const middle = solveMiddle(samples, first, count, 2 * Math.PI * frequencyHz / sampleRateHz)
-  return describe(samples, sampleRateHz, frequencyHz, first, count, middle)
+  const used = bounds(samples, sampleRateHz, frequencyHz, stretch, 3)
+  const middle = solveMiddle(samples, used.first, used.count, 2 * Math.PI * frequencyHz / sampleRateHz)
+  return describe(samples, sampleRateHz, frequencyHz, used, middle)
 }
 
 /** One Gauss–Newton step of the four-parameter fit: the change of radians per sample. */
@@ -162,7 +164,8 @@ function frequencyStep(samples: ArrayLike<number>, first: number, count: number,
  * Source: IEEE Std 1057, annex A (four-parameter fit).
  */
 export function fitSine4(samples: ArrayLike<number>, sampleRateHz: number, guessHz: number, stretch: Stretch = {}): SineFit4 {
-  const { first, count } = bounds(samples, sampleRateHz, guessHz, stretch, 4)
+  const used = bounds(samples, sampleRateHz, guessHz, stretch, 4)
+  const { first, count } = used
   const toHz = sampleRateHz / (2 * Math.PI)
   const resolutionHz = sampleRateHz / count
   let radians = guessHz / toHz
@@ -175,7 +178,7 @@ export function fitSine4(samples: ArrayLike<number>, sampleRateHz: number, guess
     }
     if (Math.abs(step) * count < 1e-8) {
       const middle = solveMiddle(samples, first, count, radians)
-      return { ...describe(samples, sampleRateHz, frequencyHz, first, count, middle), iterations }
+      return { ...describe(samples, sampleRateHz, frequencyHz, used, middle), iterations }
     }
   }
   throw new SineFitError(`The sine fit near ${guessHz} Hz did not settle in 30 steps.`)

@@ -13,6 +13,8 @@ export interface Schedule {
   /** Record time at which the first state begins; before it and after the last the lamp has `restLevel`. */
   startSeconds?: number
   restLevel?: number
+  /** Mains ripple that multiplies the light of every state, so record and frames both see it. */
+  ripple?: { depth: number, frequencyHz: number }
 }
 
 /** mulberry32: uniform in [0, 1). */
@@ -33,26 +35,49 @@ export function seededNormal(seed: number): () => number {
   return () => Math.sqrt(-2 * Math.log(1 - uniform())) * Math.cos(2 * Math.PI * uniform())
 }
 
-interface Piece extends Required<LampState> {
+interface Tone {
+  amplitude: number
+  frequencyHz: number
+  phase: number
+}
+
+export interface Piece extends Required<LampState> {
   start: number
   end: number
+  /** The light is level + Σ amplitude·sin(2πft + phase). */
+  tones: Tone[]
+}
+
+function tonesOf(state: Required<LampState>, ripple: Schedule['ripple']): Tone[] {
+  const { level, depth, frequencyHz } = state
+  const phase = state.phaseDeg * Math.PI / 180
+  const tones: Tone[] = depth > 0 ? [{ amplitude: level * depth, frequencyHz, phase }] : []
+  if (!ripple) return tones
+  // sin a · sin b = ½ cos(a − b) − ½ cos(a + b)
+  tones.push({ amplitude: level * ripple.depth, frequencyHz: ripple.frequencyHz, phase: 0 })
+  const product = level * depth * ripple.depth / 2
+  if (depth > 0) {
+    tones.push({ amplitude: product, frequencyHz: frequencyHz - ripple.frequencyHz, phase: phase + Math.PI / 2 })
+    tones.push({ amplitude: -product, frequencyHz: frequencyHz + ripple.frequencyHz, phase: phase + Math.PI / 2 })
+  }
+  return tones
 }
 
 export function piecesOf(schedule: Schedule): Piece[] {
   const rest = { frequencyHz: 0, phaseDeg: 0, depth: 0, level: schedule.restLevel ?? 0, seconds: Number.POSITIVE_INFINITY }
   let time = schedule.startSeconds ?? 0
-  const pieces: Piece[] = [{ ...rest, start: Number.NEGATIVE_INFINITY, end: time }]
+  const piece = (state: Required<LampState>, start: number, end: number): Piece => ({ ...state, start, end, tones: tonesOf(state, schedule.ripple) })
+  const pieces: Piece[] = [piece(rest, Number.NEGATIVE_INFINITY, time)]
   for (const state of schedule.states) {
-    pieces.push({ frequencyHz: 0, phaseDeg: 0, depth: 0, ...state, start: time, end: time + state.seconds })
+    pieces.push(piece({ frequencyHz: 0, phaseDeg: 0, depth: 0, ...state }, time, time + state.seconds))
     time += state.seconds
   }
-  pieces.push({ ...rest, start: time, end: Number.POSITIVE_INFINITY })
+  pieces.push(piece(rest, time, Number.POSITIVE_INFINITY))
   return pieces
 }
 
-export function lampAt(pieces: Piece[], time: number): number {
-  const piece = pieces.find(entry => time < entry.end)!
-  return piece.level * (1 + piece.depth * Math.sin(2 * Math.PI * piece.frequencyHz * time + piece.phaseDeg * Math.PI / 180))
+function lightOf(piece: Piece, time: number): number {
+  return piece.tones.reduce((sum, tone) => sum + tone.amplitude * Math.sin(2 * Math.PI * tone.frequencyHz * time + tone.phase), piece.level)
 }
 
 export function scheduleEnd(schedule: Schedule): number {
@@ -64,7 +89,6 @@ export interface RecordOptions {
   seconds: number
   noise?: number
   darkOffset?: number
-  ripple?: { depth: number, frequencyHz: number }
   seed?: number
 }
 
@@ -76,10 +100,7 @@ export function makeRecord(schedule: Schedule, options: RecordOptions): Float32A
   for (let i = 0; i < record.length; i++) {
     const time = i / options.sampleRateHz
     while (time >= pieces[at].end) at++
-    const piece = pieces[at]
-    const light = piece.level * (1 + piece.depth * Math.sin(2 * Math.PI * piece.frequencyHz * time + piece.phaseDeg * Math.PI / 180))
-    const ripple = options.ripple ? 1 + options.ripple.depth * Math.sin(2 * Math.PI * options.ripple.frequencyHz * time) : 1
-    record[i] = light * ripple + (options.darkOffset ?? 0) + (options.noise ?? 0) * normal()
+    record[i] = lightOf(pieces[at], time) + (options.darkOffset ?? 0) + (options.noise ?? 0) * normal()
   }
   return record
 }
@@ -92,10 +113,9 @@ export function lampIntegral(pieces: Piece[], from: number, to: number): number 
     const b = Math.min(to, piece.end)
     if (b <= a) continue
     sum += piece.level * (b - a)
-    if (piece.frequencyHz > 0) {
-      const omega = 2 * Math.PI * piece.frequencyHz
-      const phase = piece.phaseDeg * Math.PI / 180
-      sum += piece.level * piece.depth * (Math.cos(omega * a + phase) - Math.cos(omega * b + phase)) / omega
+    for (const { amplitude, frequencyHz, phase } of piece.tones) {
+      const omega = 2 * Math.PI * frequencyHz
+      sum += omega === 0 ? amplitude * Math.sin(phase) * (b - a) : amplitude * (Math.cos(omega * a + phase) - Math.cos(omega * b + phase)) / omega
     }
   }
   return sum
