@@ -1,11 +1,13 @@
 import type { ServerResponse } from 'node:http'
 import type { Caller } from './session'
 
-/** Beyond this a reader is dropped; it comes back with its cursor and is served page by page. */
+/** With this much waiting a reader gets nothing more until it has taken that. */
+const fullBufferBytes = 64 * 1024
+/** Nothing here writes so far ahead; if something does, the reader is dropped and comes back with its cursor. */
 export const largestBufferBytes = 256 * 1024
 export const longestStallMs = 30_000
 
-/** One open stream. What it has been sent is `position`; whoever writes looks at `blocked` first. */
+/** One open stream. What it has been sent is `position`; whoever writes looks at `full` first. */
 export class StreamClient {
   position = 0
   /** Live clients get events as they are read; the others are catching up from the database. */
@@ -30,8 +32,17 @@ export class StreamClient {
     response.on('error', () => {})
   }
 
-  get blocked(): boolean {
-    return this.blockedSince !== null
+  get full(): boolean {
+    return !this.closed && this.response.writableLength >= fullBufferBytes
+  }
+
+  /** Resolves when there is room again, or nobody is left to write to. */
+  async drained(): Promise<void> {
+    if (!this.full) return
+    await new Promise<void>((resolve) => {
+      this.response.once('drain', resolve)
+      void this.gone.then(resolve)
+    })
   }
 
   get stalled(): boolean {
@@ -47,7 +58,7 @@ export class StreamClient {
   /** Ends the stream in good order; the browser will ask again and hear why, if it may not. */
   close(): void {
     if (this.closed) return
-    if (this.blocked) return this.drop()
+    if (this.full) return this.drop()
     this.closed = true
     this.response.end()
   }

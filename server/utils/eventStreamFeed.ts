@@ -1,7 +1,7 @@
 import { heartbeatSeconds, resyncEvent } from '#shared/events'
 import type { Database } from '../db/client'
 import type { StreamClient } from './eventStreamClient'
-import { encodeEvent, readEvents, readNewestId, readVisibility, type EventRow } from './eventStreamRows'
+import { encodeEvents, readEvents, readNewestId, readVisibility, type EventPiece, type EventRow } from './eventStreamRows'
 import { findLiveCredentials } from './session'
 
 export interface FeedOptions {
@@ -17,6 +17,17 @@ const pageSize = 200
 const longestReplay = 20_000
 const pauseAfterErrorMs = 1000
 const sleep = (ms: number) => new Promise<void>(resolve => setTimeout(resolve, ms))
+
+/** Sends pieces for as long as the client takes them; false when it stopped on the way and has to catch up. */
+function deliver(client: StreamClient, pieces: EventPiece[], upTo: number): boolean {
+  for (const piece of pieces) {
+    if (client.full) return false
+    client.send(piece.bytes)
+    client.position = piece.lastId
+  }
+  client.position = Math.max(client.position, upTo)
+  return true
+}
 
 /**
  * One reader of the events table for all streams of this process; it works only while somebody listens. A client
@@ -59,7 +70,6 @@ export class EventFeed {
     void client.gone.then(() => this.leave(client))
     client.send(cursor === null ? `retry: 2000\nid: ${known}\n\n` : 'retry: 2000\n\n')
     if (cursor !== null && !(cursor <= known && known - cursor <= longestReplay)) this.resync(client)
-    client.response.on('drain', () => void this.catchUp(client))
     this.start()
     await this.catchUp(client)
   }
@@ -112,29 +122,24 @@ export class EventFeed {
   private fanOut(rows: EventRow[], maySee: Awaited<ReturnType<typeof readVisibility>>): void {
     this.newest = rows.at(-1)!.id
     // The same bytes for everybody who sees the same: 300 streams share one buffer.
-    const shared = new Map<string, Buffer>()
+    const shared = new Map<string, EventPiece[]>()
     for (const client of this.clients) {
       if (!client.live) continue
-      if (client.blocked) {
-        client.live = false
-        continue
-      }
       const visible = rows.filter(row => row.id > client.position && maySee(client.caller.user, row))
-      client.position = Math.max(client.position, this.newest)
-      if (!visible.length) continue
       const key = visible.map(row => row.id).join()
-      if (!shared.has(key)) shared.set(key, Buffer.from(visible.map(encodeEvent).join('')))
-      client.send(shared.get(key)!)
+      if (!shared.has(key)) shared.set(key, encodeEvents(visible))
+      client.live = deliver(client, shared.get(key)!, this.newest)
+      if (!client.live) void this.catchUp(client)
     }
   }
 
   private readonly catchingUp = new WeakSet<StreamClient>()
 
-  /** Sends what a client misses, page by page as it drains; ends with the client live or blocked. */
+  /** Sends what a client misses, page by page and only as fast as it drains; ends with the client live. */
   private async catchUp(client: StreamClient): Promise<void> {
     if (client.live || this.catchingUp.has(client)) return
     this.catchingUp.add(client)
-    while (!client.closed && !client.blocked && this.newest !== null) {
+    while (!client.closed && this.newest !== null) {
       if (client.position >= this.newest) {
         client.live = true
         break
@@ -149,9 +154,12 @@ export class EventFeed {
     const maySee = await readVisibility(this.options.database(), [client.caller.user])
     // The next id is not there: it was too old to be kept.
     if (rows[0]?.id !== client.position + 1) return this.resync(client)
+    for (const piece of encodeEvents(rows.filter(row => maySee(client.caller.user, row)))) {
+      await client.drained()
+      client.send(piece.bytes)
+      client.position = piece.lastId
+    }
     client.position = rows.at(-1)!.id
-    const visible = rows.filter(row => maySee(client.caller.user, row))
-    if (visible.length) client.send(visible.map(encodeEvent).join(''))
   }
 
   private resync(client: StreamClient): void {
@@ -160,7 +168,7 @@ export class EventFeed {
   }
 
   private beat(): void {
-    for (const client of this.clients) if (!client.blocked) client.send(`: beat\nid: ${client.position}\n\n`)
+    for (const client of this.clients) if (!client.full) client.send(`: beat\nid: ${client.position}\n\n`)
   }
 
   /** Closes streams whose credential ended or whose person has another role now, and drops those that stall. */

@@ -28,8 +28,24 @@ export async function readVisibility(database: Database, users: User[]): Promise
   return (user, row) => seesEveryCampaign(user.role) || (row.type === 'acquisition' && open.has(`${user.id} ${row.campaignId}`))
 }
 
-export function encodeEvent(row: EventRow): string {
-  return `id: ${row.id}\nevent: ${row.type}\ndata: ${JSON.stringify({ ...row.payload, type: row.type })}\n\n`
+export interface EventPiece {
+  bytes: Buffer
+  lastId: number
+}
+
+const pieceBytes = 32 * 1024
+
+/** Events in the stream's form, in pieces small enough that a slow reader never has much waiting for it. */
+export function encodeEvents(rows: EventRow[]): EventPiece[] {
+  const pieces: EventPiece[] = []
+  let text = ''
+  for (const [index, row] of rows.entries()) {
+    text += `id: ${row.id}\nevent: ${row.type}\ndata: ${JSON.stringify({ ...row.payload, type: row.type })}\n\n`
+    if (text.length < pieceBytes && index < rows.length - 1) continue
+    pieces.push({ bytes: Buffer.from(text), lastId: row.id })
+    text = ''
+  }
+  return pieces
 }
 
 /** Deletes events that are too old to be replayed, in small steps so that publishers never wait long. */
