@@ -5,7 +5,7 @@ import type { Caller } from './session'
 const fullBufferBytes = 64 * 1024
 /** Nothing here writes so far ahead; if something does, the reader is dropped and comes back with its cursor. */
 export const largestBufferBytes = 256 * 1024
-export const longestStallMs = 30_000
+export const longestStallMs = 20_000
 
 /** One open stream. What it has been sent is `position`; whoever writes looks at `full` first. */
 export class StreamClient {

@@ -1,4 +1,5 @@
 import { heartbeatSeconds, resyncEvent } from '#shared/events'
+import { seesEveryCampaign } from '#shared/permissions'
 import type { Database } from '../db/client'
 import type { StreamClient } from './eventStreamClient'
 import { encodeEvents, readEvents, readNewestId, readVisibility, type EventPiece, type EventRow } from './eventStreamRows'
@@ -13,10 +14,18 @@ export interface FeedOptions {
 }
 
 const pageSize = 200
+const catchUpSize = 100
+const pagesKept = 8
 /** A reader this far behind is faster served by loading its lists again. */
 const longestReplay = 20_000
 const pauseAfterErrorMs = 1000
 const sleep = (ms: number) => new Promise<void>(resolve => setTimeout(resolve, ms))
+
+interface EventPage {
+  pieces: EventPiece[]
+  /** Null when the events after the position are gone. */
+  lastId: number | null
+}
 
 /** Sends pieces for as long as the client takes them; false when it stopped on the way and has to catch up. */
 function deliver(client: StreamClient, pieces: EventPiece[], upTo: number): boolean {
@@ -98,6 +107,7 @@ export class EventFeed {
     this.timers.forEach(clearInterval)
     this.timers = []
     this.newest = null
+    this.pages.clear()
   }
 
   /** Runs until the timers it was started with are replaced. */
@@ -150,16 +160,34 @@ export class EventFeed {
   }
 
   private async sendPage(client: StreamClient): Promise<void> {
-    const rows = await readEvents(this.options.database(), client.position, pageSize)
-    const maySee = await readVisibility(this.options.database(), [client.caller.user])
-    // The next id is not there: it was too old to be kept.
-    if (rows[0]?.id !== client.position + 1) return this.resync(client)
-    for (const piece of encodeEvents(rows.filter(row => maySee(client.caller.user, row)))) {
+    await client.drained()
+    if (client.closed) return
+    const { pieces, lastId } = await this.readPage(client)
+    if (lastId === null) return this.resync(client)
+    for (const piece of pieces) {
       await client.drained()
       client.send(piece.bytes)
       client.position = piece.lastId
     }
-    client.position = rows.at(-1)!.id
+    client.position = lastId
+  }
+
+  /** Pages by their start, for those who see everything: after a restart all browsers ask for the same ones. */
+  private readonly pages = new Map<number, EventPage>()
+
+  /** No more than the coded page outlives this call: it may wait long for a slow reader. */
+  private async readPage({ position, caller: { user } }: StreamClient): Promise<EventPage> {
+    const seesAll = seesEveryCampaign(user.role)
+    const known = seesAll ? this.pages.get(position) : undefined
+    if (known) return known
+    const rows = await readEvents(this.options.database(), position, catchUpSize)
+    // The next id is not there: it was too old to be kept.
+    if (rows[0]?.id !== position + 1) return { pieces: [], lastId: null }
+    const maySee = await readVisibility(this.options.database(), [user])
+    const page = { pieces: encodeEvents(rows.filter(row => maySee(user, row))), lastId: rows.at(-1)!.id }
+    if (seesAll && rows.length === catchUpSize) this.pages.set(position, page)
+    if (this.pages.size > pagesKept) this.pages.delete(this.pages.keys().next().value!)
+    return page
   }
 
   private resync(client: StreamClient): void {
