@@ -1,10 +1,8 @@
 import type { Alignment, AlignmentEvidence } from '../../shared/measurement'
-import { coarseCandidates, type CoarseCandidate } from './alignCoarse'
 import { judgeAlignment } from './alignConfidence'
-import { searchGrid } from './alignGrid'
-import { polish, type Polished } from './alignPolish'
-import { explained, median, offsetOf, type AlignProblem, type AlignSolution } from './alignProblem'
-import { beatAmplitude, lampTones } from './lampTones'
+import { median, offsetOf, type AlignProblem } from './alignProblem'
+import { searchAlignment } from './alignSearch'
+import { lampTones } from './lampTones'
 import { createLightIntegrals, predictFrameLight } from './lightPrediction'
 
 /** Clip or record too short or without light to be aligned. */
@@ -31,20 +29,8 @@ export interface AlignResult extends Alignment {
   predicted: Float64Array
 }
 
-interface FrameRange {
-  fromFrame: number
-  toFrame: number
-}
-
-interface Spanned {
-  solution: AlignSolution
-  range: FrameRange
-}
-
-const mostCandidates = 12
-const mostPolished = 24
-/** Longer clips are aligned on a stretch of this length first, which is then doubled up to the whole. */
-const firstSpanSeconds = 60
+/** More odd frames than this share are no accidents. */
+const mostOddShare = 0.01
 
 function pose(input: AlignInput): AlignProblem {
   const { frameLight, frameTimesSeconds, illumination, sampleRateHz } = input
@@ -68,109 +54,14 @@ function pose(input: AlignInput): AlignProblem {
   }
 }
 
-/** Frames of a candidate that the record covers. */
-function coveredRange(problem: AlignProblem, offsetSeconds: number): FrameRange {
-  const { times, recordSeconds, exposureSeconds } = problem
-  let fromFrame = 0
-  while (fromFrame < times.length - 1 && times[fromFrame] + offsetSeconds < 0) fromFrame++
-  let toFrame = times.length
-  while (toFrame > fromFrame + 1 && times[toFrame - 1] + offsetSeconds + exposureSeconds > recordSeconds) toFrame--
-  return { fromFrame, toFrame }
-}
-
-/** The stretch of at most `seconds` in the range whose light varies most. */
-function liveliestSpan(problem: AlignProblem, range: FrameRange, seconds: number): FrameRange {
-  const { times, light } = problem
-  if (times[range.toFrame - 1] - times[range.fromFrame] <= seconds) return range
-  let best = range
-  let most = -1
-  for (let fromFrame = range.fromFrame; fromFrame < range.toFrame; fromFrame += Math.max(1, Math.floor(seconds / problem.frameSeconds / 4))) {
-    let toFrame = fromFrame
-    let steps = 0
-    while (toFrame < range.toFrame && times[toFrame] - times[fromFrame] <= seconds) {
-      if (toFrame > fromFrame) steps += Math.abs(light[toFrame] - light[toFrame - 1])
-      toFrame++
-    }
-    if (steps > most) {
-      most = steps
-      best = { fromFrame, toFrame }
-    }
-    if (toFrame >= range.toFrame) break
-  }
-  return best
-}
-
-/** Finest step that keeps an eighth of the fastest beating tone's period. */
-function gridStep(problem: AlignProblem): number {
-  const fastest = Math.max(0, ...problem.tones.filter(tone => beatAmplitude(tone, problem.exposureSeconds) > 0.001).map(tone => tone.frequencyHz))
-  return Math.max(problem.frameSeconds / 400, Math.min(problem.frameSeconds / 20, 1 / (10 * Math.max(fastest, 1))))
-}
-
-/** Grid minima of one coarse candidate on its first stretch. */
-function expand(problem: AlignProblem, candidate: CoarseCandidate, step: number): Spanned[] {
-  const range = liveliestSpan(problem, coveredRange(problem, candidate.offsetSeconds), firstSpanSeconds)
-  const pivotSeconds = (problem.times[range.fromFrame] + problem.times[range.toFrame - 1]) / 2
-  const middleSeconds = candidate.offsetSeconds + (1 + candidate.driftPpm * 1e-6) * pivotSeconds
-  const halfRangeSeconds = Math.max(problem.frameSeconds * 0.6, 2 * candidate.stepSeconds)
-  const area = { ...range, middleSeconds, pivotSeconds, halfRangeSeconds, stepSeconds: step, driftPpm: 0, halfRangePpm: problem.maxDriftPpm }
-  return searchGrid(problem, area, 10).map(solution => ({ solution, range }))
-}
-
-/** From a solution on its stretch to one on all covered frames, doubling the stretch; a small grid keeps it in its minimum. */
-function settle(problem: AlignProblem, start: { solution: Polished, range: FrameRange }, step: number): Polished {
-  let { solution, range } = start
-  for (;;) {
-    const covered = coveredRange(problem, offsetOf(solution))
-    if (range.fromFrame <= covered.fromFrame && range.toFrame >= covered.toFrame) return solution
-    const more = Math.ceil((range.toFrame - range.fromFrame) / 2)
-    const next = { fromFrame: Math.max(covered.fromFrame, range.fromFrame - more), toFrame: Math.min(covered.toFrame, range.toFrame + more) }
-    if (next.toFrame - next.fromFrame <= range.toFrame - range.fromFrame) return solution
-    const pivotSeconds = (problem.times[next.fromFrame] + problem.times[next.toFrame - 1]) / 2
-    const middleSeconds = solution.middleSeconds + (1 + solution.driftPpm * 1e-6) * (pivotSeconds - solution.pivotSeconds)
-    const halfRangePpm = Math.min(4 * solution.driftDeviationPpm + 0.2, problem.maxDriftPpm)
-    const area = { ...next, middleSeconds, pivotSeconds, halfRangeSeconds: 2 * step, stepSeconds: step / 2, driftPpm: solution.driftPpm, halfRangePpm }
-    solution = polish(problem, searchGrid(problem, area, 1)[0] ?? { ...solution, middleSeconds, pivotSeconds }, next)
-    range = next
-  }
-}
-
-/** How far apart two solutions are: the larger of their distances at the clip's two ends, seconds. */
-function distance(problem: AlignProblem, a: AlignSolution, b: AlignSolution): number {
-  const last = problem.times[problem.times.length - 1]
-  const startGap = offsetOf(a) - offsetOf(b)
-  const endGap = startGap + (a.driftPpm - b.driftPpm) * 1e-6 * last
-  return Math.max(Math.abs(startGap), Math.abs(endGap))
-}
-
-/** Best first, those within `apart` of a better one left out. */
-function distinct<T extends { solution: AlignSolution }>(problem: AlignProblem, entries: T[], apart: number): T[] {
-  const kept: T[] = []
-  for (const entry of entries.sort((a, b) => explained(problem, b.solution) - explained(problem, a.solution))) {
-    if (!kept.some(other => distance(problem, other.solution, entry.solution) < apart)) kept.push(entry)
-  }
-  return kept
-}
-
-function solve(problem: AlignProblem): { best: Polished, second: Polished | null } {
-  const step = gridStep(problem)
-  const candidates = coarseCandidates(problem, mostCandidates)
-  const minima = distinct(problem, candidates.flatMap(candidate => expand(problem, candidate, step)), step)
-  if (!minima.length) throw new AlignError('Clip and record do not overlap enough to be aligned; check that they belong together, or set offset and drift by hand.')
-  const polished = minima.slice(0, mostPolished).map(({ solution, range }) => ({ solution: polish(problem, solution, range), range }))
-  const fastest = Math.max(1, ...problem.tones.map(tone => tone.frequencyHz))
-  const elsewhere = Math.min(0.3 * problem.frameSeconds, Math.max(0.02 * problem.frameSeconds, 0.5 / fastest))
-  const whole = distinct(problem, polished, step).slice(0, 6).map(entry => ({ solution: settle(problem, entry, step) }))
-  const [best, second] = distinct(problem, whole, elsewhere)
-  return { best: best.solution, second: second?.solution ?? null }
-}
-
 /**
  * Tie clip time to record time by the light: every frame's mean is predicted as gain · (1/T_e)∫ L dt + background and
  * offset, drift, gain and background are fitted to all frames that the record covers.
  *
  * Full-range coarse search by normalised cross-correlation, a joint grid over offset and drift around the best
  * candidates, damped Gauss–Newton at the end. Offsets may be negative; the record may begin after or end before the clip
- * as long as a fifth of the shorter one overlaps.
+ * as long as a fifth of the shorter one overlaps. Single frames that no timing explains (flashes, corrupt frames) are left
+ * out, at most 1 % of the clip.
  *
  * @returns record time = offsetSeconds + (1 + driftPpm·1e-6) · clip time; residual is rms error over the span of the
  *   prediction; confidence 0…1 with its reasons (`evidence`), below `alignmentReviewBelow` a person should look
@@ -178,8 +69,21 @@ function solve(problem: AlignProblem): { best: Polished, second: Polished | null
  * Accuracy on seeded truth, clips of 20 s and more with edges or beat: offset 0.01 frame, drift 3 ppm.
  */
 export function alignClip(input: AlignInput): AlignResult {
-  const problem = pose(input)
-  const { best, second } = solve(problem)
+  const first = attempt(input, input.frameLight)
+  const odd = oddFrames(input.frameLight, first.predicted)
+  if (odd.length === 0 || odd.length > mostOddShare * input.frameLight.length) return first
+  const light = input.frameLight.slice()
+  for (const frame of odd) light[frame] = Number.NaN
+  const second = attempt(input, light)
+  second.evidence.reasons.push(`${odd.length} ${odd.length === 1 ? 'frame' : 'frames'} whose light no timing explains (first: frame ${odd[0]}) were left out of the fit.`)
+  return second
+}
+
+function attempt(input: AlignInput, frameLight: Float64Array): AlignResult {
+  const problem = pose({ ...input, frameLight })
+  const found = searchAlignment(problem)
+  if (!found) throw new AlignError('Clip and record do not overlap enough to be aligned; check that they belong together, or set offset and drift by hand.')
+  const { best } = found
   const timing = { frameTimesSeconds: input.frameTimesSeconds, exposureSeconds: input.exposureSeconds, offsetSeconds: offsetOf(best), driftPpm: best.driftPpm }
   const predicted = predictFrameLight(problem.integrals, timing)
   let lowest = Number.POSITIVE_INFINITY
@@ -190,6 +94,21 @@ export function alignClip(input: AlignInput): AlignResult {
     if (predicted[k] > highest) highest = predicted[k]
   }
   const residual = highest > lowest ? Math.min(1, Math.sqrt(best.squares / best.frames) / (highest - lowest)) : 1
-  const { confidence, evidence } = judgeAlignment(problem, { best, second, residual })
+  const { confidence, evidence } = judgeAlignment(problem, { ...found, residual })
   return { offsetSeconds: timing.offsetSeconds, driftPpm: timing.driftPpm, residual, confidence, method: 'light', version: 1, evidence, predicted }
+}
+
+/** Single frames far off their prediction where it is so level that no error of timing can be the reason. */
+function oddFrames(light: Float64Array, predicted: Float64Array): number[] {
+  const errors = predicted.map((value, k) => Math.abs(light[k] - value))
+  const spread = 1.4826 * median(errors.filter(Number.isFinite))
+  const odd: number[] = []
+  for (let k = 0; k < errors.length; k++) {
+    if (!(errors[k] > 8 * spread)) continue
+    const near = [k - 2, k - 1, k, k + 1, k + 2].filter(n => n >= 0 && n < errors.length && Number.isFinite(predicted[n]))
+    const levels = near.map(n => predicted[n])
+    const alone = near.every(n => n === k || !(errors[n] > errors[k] / 4))
+    if (alone && Math.max(...levels) - Math.min(...levels) < errors[k] / 2) odd.push(k)
+  }
+  return odd
 }

@@ -1,8 +1,8 @@
 import type { AlignmentEvidence } from '../../shared/measurement'
 import type { Polished } from './alignPolish'
-import { explained, offsetOf, type AlignProblem } from './alignProblem'
+import { offsetOf, type AlignProblem } from './alignProblem'
 import { beatAmplitude } from './lampTones'
-import { windowMean } from './lightPrediction'
+import { predictFrameLight, windowMean } from './lightPrediction'
 
 interface Judged {
   best: Polished
@@ -64,6 +64,68 @@ function featureSentence(problem: AlignProblem, edges: number, beat: boolean): s
   return `${why}, and no lamp edge lies inside the clip: nothing ties clip and record together. Set offset and drift by hand.`
 }
 
+/** Light and error (NaN where the record does not cover it) of every frame under a solution. */
+function errorsOf(problem: AlignProblem, solution: Polished): Float64Array {
+  const timing = { frameTimesSeconds: problem.times, exposureSeconds: problem.exposureSeconds, offsetSeconds: offsetOf(solution), driftPpm: solution.driftPpm }
+  return predictFrameLight(problem.integrals, timing).map((mean, k) => problem.light[k] - solution.gain * mean - solution.background)
+}
+
+/** Sum of squares of a first-order autoregressive series' innovations, and their number. */
+function innovations(series: ArrayLike<number>, correlation: number) {
+  let squares = 0
+  let count = 0
+  for (let k = 1; k < series.length; k++) {
+    const innovation = series[k] - correlation * series[k - 1]
+    if (Number.isNaN(innovation)) continue
+    squares += innovation * innovation
+    count++
+  }
+  return { squares, count }
+}
+
+function frameCorrelation(errors: Float64Array): number {
+  let squares = 0
+  let products = 0
+  for (let k = 1; k < errors.length; k++) {
+    const product = errors[k] * errors[k - 1]
+    if (Number.isNaN(product)) continue
+    products += product
+    squares += (errors[k] ** 2 + errors[k - 1] ** 2) / 2
+  }
+  return squares > 0 ? Math.min(0.98, Math.max(0, products / squares)) : 0
+}
+
+/** What a solution explains of the light (see `explained`), in nats over all frames, errors taken as autoregressive. */
+function explainedNats(problem: AlignProblem, errors: Float64Array, correlation: number): number {
+  const fit = innovations(errors, correlation)
+  const covered = problem.light.map((value, k) => Number.isNaN(errors[k]) ? Number.NaN : value)
+  let mean = 0
+  let count = 0
+  for (const value of covered) {
+    if (Number.isNaN(value)) continue
+    mean += value
+    count++
+  }
+  const none = innovations(covered.map(value => value - mean / count), correlation)
+  const floor = (1e-6 * problem.lightVariance + Number.MIN_VALUE) * fit.count
+  return 0.5 * fit.count * Math.log((none.squares + floor) / (fit.squares + floor))
+}
+
+/**
+ * How much worse the best solution elsewhere is, with slow errors (gain drifting with temperature) taken out by their
+ * correlation from frame to frame.
+ *
+ * Full marks need its residual 15 % above the best one's (systematic errors move it by some percent) and a difference
+ * worth 60 nats (10 for none), so that noise cannot make it.
+ */
+function uniqueness(problem: AlignProblem, best: Polished, second: Polished): { ratio: number, grade: number } {
+  const errors = errorsOf(problem, best)
+  const correlation = frameCorrelation(errors)
+  const nats = explainedNats(problem, errors, correlation) - explainedNats(problem, errorsOf(problem, second), correlation)
+  const ratio = Math.max(1, Math.exp(nats / problem.light.length))
+  return { ratio, grade: Math.min(1, Math.max(0, (ratio - 1) / 0.15)) * Math.min(1, Math.max(0, (nats - 10) / 50)) }
+}
+
 /**
  * How far an automatic alignment may be trusted, and why.
  *
@@ -76,22 +138,23 @@ export function judgeAlignment(problem: AlignProblem, judged: Judged): { confide
   const edges = countEdges(problem, best)
   const residualRms = Math.sqrt(best.squares / best.frames)
   const highest = problem.light.reduce((most, value) => Math.max(most, value - best.background), 0)
+  const brightest = problem.light.reduce((most, value) => Math.max(most, Math.abs(value)), Number.MIN_VALUE)
   const strongest = Math.max(0, ...problem.tones.map(tone => beatAmplitude(tone, problem.exposureSeconds))) * highest
   const beat = strongest > Math.max(1.5 * residualRms, 0.0015 * highest)
-  const ratio = second ? Math.max(1, Math.exp(explained(problem, best) - explained(problem, second))) : null
+  const unique = second && uniqueness(problem, best, second)
   const precisionFrames = best.middleDeviationSeconds / problem.frameSeconds
   const covered = best.frames / problem.light.length
   const grades = {
     features: edges >= 2 ? 1 : edges === 1 ? (beat ? 0.9 : 0.65) : beat ? 0.75 : 0.1,
-    residual: grade(residual, 0.12, 0.02),
-    uniqueness: ratio === null ? 1 : grade(ratio, 1, 1.5),
+    residual: grade(residualRms / brightest, 0.06, 0.012),
+    uniqueness: unique?.grade ?? 1,
     precision: grade(precisionFrames, 0.3, 0.02),
     coverage: covered >= 0.9 ? 1 : 0.5 + 0.5 * covered / 0.9,
   }
   const reasons = [featureSentence(problem, edges, beat)]
   if (grades.residual < 1) reasons.push(`Measured and predicted light differ by ${(100 * residual).toFixed(1)} % of their span; check transfer, exposure and channel.`)
-  if (ratio !== null && grades.uniqueness < 1) {
-    reasons.push(`An offset of ${offsetOf(second!).toFixed(3)} s fits nearly as well (residual ${ratio.toFixed(2)} times the best one's); compare the two.`)
+  if (unique && grades.uniqueness < 1) {
+    reasons.push(`An offset of ${offsetOf(second!).toFixed(4)} s fits nearly as well (residual ${unique.ratio.toFixed(3)} times the best one's); compare the two.`)
   }
   if (grades.precision < 1) {
     reasons.push(Number.isFinite(precisionFrames)
@@ -103,7 +166,7 @@ export function judgeAlignment(problem: AlignProblem, judged: Judged): { confide
     confidence: Math.min(...Object.values(grades)),
     evidence: {
       gain: best.gain, background: best.background,
-      secondBestRatio: ratio, secondBestOffsetSeconds: second && offsetOf(second),
+      secondBestRatio: unique?.ratio ?? null, secondBestOffsetSeconds: second && offsetOf(second),
       edges, beat, reasons,
     },
   }

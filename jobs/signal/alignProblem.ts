@@ -54,7 +54,7 @@ export function fitGain(n: number, w: number, ww: number, y: number, yy: number,
  * cover, so that solutions of different overlap compare fairly. Errors below 0.1 % of the light's spread count as that.
  */
 export function explained(problem: AlignProblem, solution: { frames: number, squares: number, coveredSquares: number }): number {
-  const floor = 1e-6 * problem.lightVariance * solution.frames
+  const floor = (1e-6 * problem.lightVariance + Number.MIN_VALUE) * solution.frames
   return 0.5 * solution.frames * Math.log((solution.coveredSquares + floor) / (solution.squares + floor)) / problem.light.length
 }
 
