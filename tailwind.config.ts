@@ -2,10 +2,15 @@ import type { Config } from 'tailwindcss'
 
 const token = (name: string) => `var(--${name})`
 
+/** Steps of 4 px whatever the type size, so that rules and text keep one left edge. */
+const steps = [0, 0.5, 1, 1.5, 2, 2.5, 3, 3.5, 4, 5, 6, 7, 8, 9, 10, 11, 12, 16]
+const spacing = { px: '1px', ...Object.fromEntries(steps.map(step => [step, `${step * 4}px`])) }
+
 /** Only what the design tokens hold: no default palette, no shadows, one radius. */
 export default {
   content: ['./app.vue', './error.vue', './layouts/**/*.vue', './pages/**/*.vue', './components/**/*.vue', './composables/**/*.ts'],
   theme: {
+    spacing,
     colors: {
       'transparent': 'transparent',
       'current': 'currentColor',

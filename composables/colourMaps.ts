@@ -25,9 +25,13 @@ const encode = (value: number) => Math.round(255 * Math.max(0, Math.min(1, value
 /** Lightness 0…1, chroma, hue in degrees to sRGB codes; chroma is lowered until the colour exists. */
 export function okLchToRgb(lightness: number, chroma: number, hueDeg: number): Rgb {
   const at = (c: number) => okLabToLinear(lightness, c * Math.cos(hueDeg * Math.PI / 180), c * Math.sin(hueDeg * Math.PI / 180))
+  if (inGamut(at(chroma))) return at(chroma).map(encode) as Rgb
   let [low, high] = [0, chroma]
-  if (inGamut(at(chroma))) low = chroma
-  else for (let step = 0; step < 20; step++) (inGamut(at((low + high) / 2)) ? low = (low + high) / 2 : high = (low + high) / 2)
+  for (let step = 0; step < 20; step++) {
+    const middle = (low + high) / 2
+    if (inGamut(at(middle))) low = middle
+    else high = middle
+  }
   return at(low).map(encode) as Rgb
 }
 

@@ -29,6 +29,12 @@ export function formatSignificant(value: number | null | undefined, significant 
   return formatNumber(value, Math.max(0, Math.min(significant - 1 - exponent, 12)))
 }
 
+/** At most `significant` figures, without trailing zeros: for values that were typed. */
+export function formatTrimmed(value: number | null | undefined, significant = 4): string {
+  const text = formatSignificant(value, significant)
+  return /^[^·]*\.\d*$/.test(text) ? text.replace(/\.?0+$/, '') : text
+}
+
 function superscript(power: number): string {
   return String(power).replace(/[-\d]/g, sign => sign === '-' ? '⁻' : '⁰¹²³⁴⁵⁶⁷⁸⁹'[Number(sign)]!)
 }

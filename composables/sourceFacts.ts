@@ -14,7 +14,7 @@ function split<F>(value: Record<string, unknown> | null, name: string): WithSour
   return { facts: (value[name] ?? value) as F, source: (value.source as SourceFile | undefined) ?? null }
 }
 
-export const sourceWords = { stream: 'as the clip states', setting: 'as set', assumed: 'assumed' }
+export const sourceWords = { stream: 'stated', setting: 'set', assumed: 'assumed' }
 
 export function transferWord(transfer: ClipFacts['transfer']): string {
   return { bt709: 'BT.709', srgb: 'sRGB', linear: 'linear light', gamma22: 'gamma 2.2' }[transfer]
