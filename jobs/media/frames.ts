@@ -53,13 +53,14 @@ export async function readFrames(path: string, clip: ReadableClip, { signal, fir
 
 /**
  * extractplanes hands the luma codes on untouched (`-pix_fmt gray` would rescale them). With `-autoscale 0` a change of
- * size in mid-stream shows in the byte count instead of being rescaled.
+ * size in mid-stream shows in the byte count instead of being rescaled. Frames are numbered anew behind the filter, since
+ * the writer complains about timestamps that repeat.
  */
 function decodeArguments(path: string, container: string, threads: number | undefined, lastFrame: number): string[] {
   return [
     '-nostdin', '-hide_banner', '-v', 'error', '-noautorotate', ...threads === undefined ? [] : ['-threads', String(threads)],
     ...inputLimits, ...editListOptions(container), '-i', inputFile(path),
-    '-map', '0:V:0', '-an', '-sn', '-dn', '-vf', 'extractplanes=y', '-fps_mode', 'passthrough', '-autoscale', '0',
+    '-map', '0:V:0', '-an', '-sn', '-dn', '-vf', 'extractplanes=y,settb=1/1000,setpts=N', '-enc_time_base', '1/1000', '-fps_mode', 'passthrough', '-autoscale', '0',
     ...Number.isFinite(lastFrame) ? ['-frames:v', String(lastFrame)] : [],
     '-progress', 'pipe:3', '-f', 'rawvideo', 'pipe:1',
   ]

@@ -8,6 +8,9 @@ const timeoutSeconds = 60
 /** Demuxers that open what a text names: other files, other addresses. */
 const lists = new Set(['hls', 'concat', 'dash', 'sdp', 'rtsp', 'imf', 'webm_dash_manifest', 'asf_o', 'tedcaptions'])
 
+/** ffmpeg's words when `-max_pixels` stops a decoder; the container may open all the same. */
+const tooBig = /exceeds specified max pixel count/
+
 /**
  * Open the file as ffmpeg would, within limits, and answer its demuxer's names ("mov,mp4,m4a,3gp,3g2,mj2").
  *
@@ -22,7 +25,7 @@ export async function openContainer(path: string, signal?: AbortSignal): Promise
     },
   })
   const container = text.trim()
-  if (exitCode === 0 && container) return container
+  if (exitCode === 0 && container && !tooBig.test(stderrTail)) return container
   throw await refusal(path, stderrTail)
 }
 
@@ -31,7 +34,7 @@ async function refusal(path: string, stderrTail: string): Promise<MediaError> {
   const refused = /\[(\w+)[^\]]*\] Format not on whitelist/.exec(stderrTail)?.[1]
   if (refused && lists.has(refused)) return new MediaError('playlist-refused', `This is not a video but a list (${refused}) that points to other files; nothing it names was opened. Upload the video itself.`, details)
   if (refused) return new MediaError('container-unsupported', `This is a file of the kind “${refused}”, which is not read here. ${readable}`, details)
-  if (/exceeds specified max pixel count/.test(stderrTail)) return new MediaError('picture-too-big', `The picture is too big. Use at most ${Math.floor(maximumPixels / 1e6)} megapixels.`, details)
+  if (tooBig.test(stderrTail)) return new MediaError('picture-too-big', `The picture is too big. Use at most ${Math.floor(maximumPixels / 1e6)} megapixels.`, details)
   if (/moov atom not found/.test(stderrTail) && await beginsAsQuickTime(path)) return new MediaError('clip-incomplete', 'The file has no index: the camera did not finish it, or the copy ended early. Copy it again from the card, or let the camera repair it.', details)
   return new MediaError('not-video', `This is not a video file. ${readable}`, details)
 }

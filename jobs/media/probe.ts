@@ -49,6 +49,7 @@ export async function probeClip(path: string, settings: { transfer: Transfer, ra
 
 function assertMeasurable({ width, height, pixelFormat, codec }: VideoStream): void {
   if (!(width > 0 && height > 0)) throw new MediaError('no-video', 'The picture size cannot be found in the file. It may be damaged: upload it again from the card.')
+  if (pixelFormat === 'unknown') throw new MediaError('not-decodable', `No frame of the ${codec} stream can be decoded. The file may be damaged: upload it again from the card.`)
   if (width * height > maximumPixels) throw new MediaError('picture-too-big', `A picture of ${width}×${height} is too big. Use at most ${Math.floor(maximumPixels / 1e6)} megapixels.`)
   if (!Object.hasOwn(lumaFormats, pixelFormat)) throw new MediaError('pixel-format', `Light cannot be measured from ${codec} in pixel format ${pixelFormat}. Record or export 8-bit or 10-bit YUV or grey.`)
 }
