@@ -29,8 +29,8 @@ export interface AlignResult extends Alignment {
   predicted: Float64Array
 }
 
-/** More odd frames than this share are no accidents. */
-const mostOddShare = 0.01
+/** More odd frames than this share are no accidents: lamp changes that the record has elsewhere look like them. */
+const mostOddShare = 0.003
 
 function pose(input: AlignInput): AlignProblem {
   const { frameLight, frameTimesSeconds, illumination, sampleRateHz } = input
@@ -61,7 +61,7 @@ function pose(input: AlignInput): AlignProblem {
  * Full-range coarse search by normalised cross-correlation, a joint grid over offset and drift around the best
  * candidates, damped Gauss–Newton at the end. Offsets may be negative; the record may begin after or end before the clip
  * as long as a fifth of the shorter one overlaps. Single frames that no timing explains (flashes, corrupt frames) are left
- * out, at most 1 % of the clip.
+ * out, at most two or 0.3 % of the clip.
  *
  * @returns record time = offsetSeconds + (1 + driftPpm·1e-6) · clip time; residual is rms error over the span of the
  *   prediction; confidence 0…1 with its reasons (`evidence`), below `alignmentReviewBelow` a person should look
@@ -71,11 +71,11 @@ function pose(input: AlignInput): AlignProblem {
 export function alignClip(input: AlignInput): AlignResult {
   const first = attempt(input, input.frameLight)
   const odd = oddFrames(input.frameLight, first.predicted)
-  if (odd.length === 0 || odd.length > mostOddShare * input.frameLight.length) return first
+  if (odd.length === 0 || odd.length > Math.max(2, mostOddShare * input.frameLight.length)) return first
   const light = input.frameLight.slice()
   for (const frame of odd) light[frame] = Number.NaN
   const second = attempt(input, light)
-  second.evidence.reasons.push(`${odd.length} ${odd.length === 1 ? 'frame' : 'frames'} whose light no timing explains (first: frame ${odd[0]}) were left out of the fit.`)
+  second.evidence.reasons.push(`${odd.length} ${odd.length === 1 ? 'frame' : 'frames'} whose light no timing explains (first: frame ${odd[0]}) ${odd.length === 1 ? 'was' : 'were'} left out of the fit.`)
   return second
 }
 

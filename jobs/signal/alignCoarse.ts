@@ -137,12 +137,16 @@ export function coarseCandidates(problem: AlignProblem, most: number): CoarseCan
   return separated(best, most)
 }
 
+/** A candidate this many nats a frame below the best one cannot win; a few are kept all the same, to compare with. */
+const hopeless = 1.5
+const fewest = 4
+
 /** The best cells, leaving out those next to a better one. */
 function separated(cells: Map<number, CoarseCandidate>, most: number): CoarseCandidate[] {
   const taken = new Set<number>()
   const kept: CoarseCandidate[] = []
   for (const [cell, candidate] of [...cells].sort((a, b) => b[1].score - a[1].score)) {
-    if (kept.length >= most) break
+    if (kept.length >= most || (kept.length >= fewest && candidate.score < kept[0].score - hopeless)) break
     if (!taken.has(cell - 1) && !taken.has(cell + 1)) {
       taken.add(cell)
       kept.push(candidate)

@@ -7,7 +7,7 @@ export interface LightIntegrals {
   sums: Float64Array
 }
 
-const stride = 16
+const stride = 4
 
 /**
  * Running trapezoid integrals of a record, so that the mean over any window costs the same however long it is.
@@ -15,7 +15,7 @@ const stride = 16
  * @param illumination lamp signal, any unit; NaN poisons every window after it
  * @param sampleRateHz samples a second
  * @param darkLevel subtracted from every sample; null counts as 0
- * @returns sums at every 16th sample in double precision (half a byte a sample)
+ * @returns sums at every fourth sample in double precision (2 bytes a sample)
  */
 export function createLightIntegrals(illumination: Float32Array, sampleRateHz: number, darkLevel: number | null = null): LightIntegrals {
   const dark = darkLevel ?? 0
