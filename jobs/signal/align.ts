@@ -1,5 +1,6 @@
 import type { Alignment, AlignmentEvidence } from '../../shared/measurement'
-import { judgeAlignment } from './alignConfidence'
+import { gradeAlignment } from './alignConfidence'
+import { evaluateAt, polish, type Polished } from './alignPolish'
 import { median, offsetOf, type AlignProblem } from './alignProblem'
 import { searchAlignment } from './alignSearch'
 import { lampTones } from './lampTones'
@@ -79,10 +80,47 @@ export function alignClip(input: AlignInput): AlignResult {
   return second
 }
 
+/**
+ * Judge an alignment set by hand: gain and background are fitted at the given offset and drift, nothing is moved.
+ *
+ * @returns as `alignClip`, with method `manual`; a reason tells when a better fit lies close by. NaN residual is not
+ *   possible: an alignment under which the record covers fewer than 5 frames has residual 1 and confidence 0
+ * @throws AlignError as `alignClip`, except for missing overlap
+ */
+export function judgeAlignment(input: AlignInput, manual: { offsetSeconds: number, driftPpm: number, version?: number }): AlignResult {
+  const problem = pose(input)
+  const all = { fromFrame: 0, toFrame: problem.times.length }
+  const pivotSeconds = problem.times[problem.times.length - 1] / 2
+  const middleSeconds = manual.offsetSeconds + (1 + manual.driftPpm * 1e-6) * pivotSeconds
+  const set = evaluateAt(problem, all, middleSeconds, pivotSeconds, manual.driftPpm)
+  if (set.frames < 5) return uncovered(input, manual)
+  const near = polish(problem, set, all)
+  const deviations = { middleDeviationSeconds: near.middleDeviationSeconds, driftDeviationPpm: near.driftDeviationPpm }
+  const result = report(input, problem, { best: { ...set, ...deviations }, second: null })
+  if (near.squares / near.frames < 0.8 * set.squares / set.frames) {
+    result.evidence.reasons.push(`A better fit lies near: offset ${offsetOf(near).toFixed(4)} s, drift ${near.driftPpm.toFixed(1)} ppm, residual ${(100 * Math.sqrt(near.squares * set.frames / near.frames / set.squares)).toFixed(0)} % of this one's.`)
+  }
+  return { ...result, offsetSeconds: manual.offsetSeconds, driftPpm: manual.driftPpm, method: 'manual', version: manual.version ?? 1 }
+}
+
+function uncovered(input: AlignInput, manual: { offsetSeconds: number, driftPpm: number, version?: number }): AlignResult {
+  const reasons = ['With this offset the record covers hardly any frame of the clip; check its sign.']
+  return {
+    offsetSeconds: manual.offsetSeconds, driftPpm: manual.driftPpm, residual: 1, confidence: 0, method: 'manual', version: manual.version ?? 1,
+    evidence: { gain: 0, background: 0, secondBestRatio: null, secondBestOffsetSeconds: null, edges: 0, beat: false, reasons },
+    predicted: new Float64Array(input.frameLight.length).fill(Number.NaN),
+  }
+}
+
 function attempt(input: AlignInput, frameLight: Float64Array): AlignResult {
   const problem = pose({ ...input, frameLight })
   const found = searchAlignment(problem)
   if (!found) throw new AlignError('Clip and record do not overlap enough to be aligned; check that they belong together, or set offset and drift by hand.')
+  return report(input, problem, found)
+}
+
+/** What a solution predicts, its residual, and how far it may be trusted. */
+function report(input: AlignInput, problem: AlignProblem, found: { best: Polished, second: Polished | null }): AlignResult {
   const { best } = found
   const timing = { frameTimesSeconds: input.frameTimesSeconds, exposureSeconds: input.exposureSeconds, offsetSeconds: offsetOf(best), driftPpm: best.driftPpm }
   const predicted = predictFrameLight(problem.integrals, timing)
@@ -94,7 +132,7 @@ function attempt(input: AlignInput, frameLight: Float64Array): AlignResult {
     if (predicted[k] > highest) highest = predicted[k]
   }
   const residual = highest > lowest ? Math.min(1, Math.sqrt(best.squares / best.frames) / (highest - lowest)) : 1
-  const { confidence, evidence } = judgeAlignment(problem, { ...found, residual })
+  const { confidence, evidence } = gradeAlignment(problem, { ...found, residual })
   return { offsetSeconds: timing.offsetSeconds, driftPpm: timing.driftPpm, residual, confidence, method: 'light', version: 1, evidence, predicted }
 }
 

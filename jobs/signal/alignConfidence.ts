@@ -133,7 +133,7 @@ function uniqueness(problem: AlignProblem, best: Polished, second: Polished): { 
  * worse the best solution elsewhere is, formal precision of the offset against a frame, and share of the clip covered.
  * Each grade below 1 gives a sentence.
  */
-export function judgeAlignment(problem: AlignProblem, judged: Judged): { confidence: number, evidence: AlignmentEvidence } {
+export function gradeAlignment(problem: AlignProblem, judged: Judged): { confidence: number, evidence: AlignmentEvidence } {
   const { best, second, residual } = judged
   const edges = countEdges(problem, best)
   const residualRms = Math.sqrt(best.squares / best.frames)

@@ -1,5 +1,5 @@
 import { describe, expect, it } from 'vitest'
-import { alignClip, AlignError, type AlignInput } from '../../../jobs/signal/align'
+import { alignClip, AlignError, judgeAlignment, type AlignInput } from '../../../jobs/signal/align'
 import { alignmentReviewBelow } from '../../../shared/measurement'
 import { makeClip, makeRecord, scheduleEnd, seededNormal, seededUniform, usualSchedule, type ClipOptions, type RecordOptions, type Schedule } from './synthetic'
 
@@ -133,6 +133,29 @@ describe('confidence of an alignment', () => {
     }
     expect(align(schedule, { ...record, seconds: 20 }, { ...clip, frameCount: 500 }, { illumination: new Float32Array(200_000) }).confidence).toBeLessThan(0.1)
     expect(() => align(schedule, { ...record, seconds: 20 }, { ...clip, frameCount: 5 })).toThrow(AlignError)
+  })
+})
+
+describe('an alignment set by hand', () => {
+  const schedule = lively(11, [202.3], 1.5, 2, 1)
+  const clip = { frameRateHz: 50, exposureSeconds: 1 / 50, frameCount: 500, offsetSeconds: 0.4, driftPpm: 20, noise: 0.002 }
+  const input = { ...makeClip(schedule, clip), exposureSeconds: 1 / 50, illumination: makeRecord(schedule, { sampleRateHz: 10_000, seconds: 13 }), sampleRateHz: 10_000, darkLevel: null }
+
+  it('is kept as it is, judged, and a better one near it is named', () => {
+    const right = judgeAlignment(input, { offsetSeconds: 0.4, driftPpm: 20, version: 4 })
+    expect(right).toMatchObject({ offsetSeconds: 0.4, driftPpm: 20, method: 'manual', version: 4 })
+    expect(right.confidence).toBeGreaterThan(alignmentReviewBelow)
+    expect(right.residual).toBeLessThan(0.005)
+    const off = judgeAlignment(input, { offsetSeconds: 0.401, driftPpm: 20 })
+    expect(off.offsetSeconds).toBe(0.401)
+    expect(off.residual).toBeGreaterThan(right.residual * 1.2)
+    expect(off.evidence.reasons.join(' ')).toMatch(/better fit lies near: offset 0\.4000 s/)
+  })
+
+  it('that leaves the record has confidence 0 and says so', () => {
+    const found = judgeAlignment(input, { offsetSeconds: -50, driftPpm: 0 })
+    expect(found).toMatchObject({ confidence: 0, residual: 1 })
+    expect(found.predicted.every(Number.isNaN)).toBe(true)
   })
 })
 
