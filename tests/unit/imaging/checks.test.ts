@@ -1,0 +1,150 @@
+import { describe, expect, it } from 'vitest'
+import { checkLine, proposeRejections, type CheckInput } from '../../../jobs/imaging/checks'
+import { solveFrameSet } from '../../../jobs/imaging/solve'
+import { checkDefinitions, type CheckId, type CheckResult } from '../../../shared/checks'
+import type { Group } from '../../../shared/measurement'
+import { normal, random, WaveTexture } from './pictures'
+
+const [width, height] = [96, 80]
+const frameCount = 50
+const texture = new WaveTexture(21)
+
+interface Bump {
+  repetition: number
+  /** Position in the repetition: 0 reference, 1 and 2 phases. */
+  from: number
+  dx: number
+  /** Lasts until the end, else for that group only. */
+  stays: boolean
+}
+
+/** A line of repetitions that pass: reference, sine, cosine; a bump moves the camera. */
+function line(repetitions: number, bumps: Bump[] = []): CheckInput {
+  const next = random(4)
+  const groups: Group[] = []
+  const integrals: number[] = []
+  const sums: Uint32Array[] = []
+  for (let repetition = 1; repetition <= repetitions; repetition++) {
+    for (let kind = 0; kind < 3; kind++) {
+      const place = groups.length
+      const dx = bumps.reduce((sum, bump) => (bump.stays ? place >= 3 * (bump.repetition - 1) + bump.from : repetition === bump.repetition && kind === bump.from) ? sum + bump.dx : sum, 0)
+      const level = 2 * frameCount
+      const [c, s] = [kind === 2 ? 0.8 * level / 2 : 0, kind === 1 ? 0.8 * level / 2 : 0]
+      const motion = (c - s) / level * 0.4
+      groups.push({
+        id: `l1-r${repetition}-${kind}`, line: 1, frequencyHz: 400, repetition, role: kind ? 'phase' : 'reference', lampPhaseDeg: kind ? (kind - 1) * 90 : null,
+        depth: kind ? 0.8 : null, firstFrame: place * frameCount, frameCount, accepted: true, flags: [],
+      })
+      integrals.push(level, c, s)
+      sums.push(texture.picture(width, height, dx + motion, 0).map(value => Math.max(0, value + 600 * normal(next))))
+    }
+  }
+  const frames = groups.length * frameCount
+  return { groups, integrals: Float64Array.from(integrals), sums, width, height, meter: { light: new Float64Array(frames).fill(0.4), clipped: new Float64Array(frames), black: new Float64Array(frames).fill(0.01) } }
+}
+
+function solved(input: CheckInput): CheckInput {
+  return { ...input, solution: solveFrameSet({ ...input, sums: [...input.sums], roles: input.groups.map(group => group.role), frames: input.groups.map(group => group.frameCount) }) }
+}
+
+const failed = (results: CheckResult[]) => results.filter(({ passed }) => !passed).map(({ checkId, repetition }) => `${checkId} ${repetition}`)
+const valueOf = (results: CheckResult[], id: CheckId, repetition: number | null) => results.find(result => result.checkId === id && result.repetition === repetition)!.value!
+
+describe('checks of a line', () => {
+  it('all pass for good repetitions, each with its value and limit', () => {
+    const results = checkLine(solved(line(3)))
+    expect(failed(results)).toEqual([])
+    expect(results.filter(({ repetition }) => repetition === 2).map(({ checkId }) => checkId)).toEqual(['clipped-share', 'black-share', 'level-drift', 'light-drift', 'depth', 'quadrature-error', 'whole-period-error', 'camera-motion', 'residual'])
+    expect(results.filter(({ repetition }) => repetition === null).map(({ checkId }) => checkId)).toEqual(['conditioning', 'noise'])
+    for (const { checkId, value, limit, unit } of results) {
+      expect(value).not.toBeNull()
+      expect([limit, unit]).toEqual([checkDefinitions[checkId as CheckId].limit, checkDefinitions[checkId as CheckId].unit])
+    }
+  })
+
+  it('measure camera motion within 0.01 px and fail only the repetition that was bumped', () => {
+    const results = checkLine(line(4, [{ repetition: 3, from: 0, dx: 0.2, stays: false }]))
+    expect(failed(results)).toEqual(['camera-motion 3'])
+    expect(valueOf(results, 'camera-motion', 3)).toBeCloseTo(0.2, 2)
+    for (const good of [1, 2, 4]) expect(valueOf(results, 'camera-motion', good)).toBeLessThan(0.02)
+  })
+
+  it('see a bump between the reference and its phases', () => {
+    expect(failed(checkLine(line(4, [{ repetition: 2, from: 2, dx: 0.15, stays: false }])))).toEqual(['camera-motion 2'])
+  })
+
+  it('blame the fewer when the camera stays where it was bumped to', () => {
+    expect(failed(checkLine(line(5, [{ repetition: 2, from: 1, dx: -0.4, stays: true }])))).toEqual(['camera-motion 1', 'camera-motion 2'])
+  })
+
+  it('do not take the motion seen under the two phases for camera motion', () => {
+    expect(valueOf(checkLine(line(2)), 'camera-motion', 1)).toBeLessThan(0.02)
+  })
+
+  it('give both of two repetitions their distance, as nobody can tell which one moved', () => {
+    expect(failed(checkLine(line(2, [{ repetition: 2, from: 0, dx: 0.3, stays: true }])))).toEqual(['camera-motion 1', 'camera-motion 2'])
+  })
+
+  it('fail a repetition whose pictures cannot be matched at all', () => {
+    const input = line(3)
+    const other = new WaveTexture(99)
+    const sums = input.sums.map((sum, g) => g >= 6 ? other.picture(width, height, 3 * g) : sum)
+    expect(checkLine({ ...input, sums }).find(({ checkId, repetition }) => checkId === 'camera-motion' && repetition === 3)!.passed).toBe(false)
+  })
+
+  it('find clipping, automatic exposure, shallow and wrong lamp, part periods', () => {
+    const input = line(3)
+    const [clipped, light] = [Float64Array.from(input.meter.clipped), Float64Array.from(input.meter.light)]
+    clipped.fill(0.004, 150, 200)
+    light.fill(0.36, 350, 400)
+    const integrals = input.integrals.slice()
+    integrals[1] = 4
+    const groups = input.groups.map((group, g) => g === 4 ? { ...group, depth: 0.3, lampPhaseDeg: 20 } : group)
+    const results = checkLine({ ...input, groups, integrals, meter: { ...input.meter, clipped, light }, distortions: input.groups.map((_, g) => g === 8 ? 0.12 : g % 3 ? 0.01 : null) })
+    expect(failed(results).sort()).toEqual(['clipped-share 2', 'depth 2', 'distortion 3', 'light-drift 3', 'quadrature-error 2', 'whole-period-error 1'])
+    expect(valueOf(results, 'clipped-share', 2)).toBeCloseTo(0.4, 9)
+    expect(valueOf(results, 'quadrature-error', 2)).toBeCloseTo(20, 9)
+    expect(valueOf(results, 'light-drift', 3)).toBeCloseTo(100 * 0.04 / (1.16 / 3), 6)
+  })
+
+  it('take ambient light off before light is held against the record', () => {
+    const input = line(2)
+    const dark: Group = { ...input.groups[0], id: 'dark', role: 'dark', firstFrame: 300, frameCount: 10 }
+    const light = Float64Array.from({ length: 310 }, (_, i) => i >= 300 ? 0.1 : i >= 50 && i < 100 ? 0.1 + 0.33 : 0.1 + 0.3)
+    const integrals = Float64Array.from([...input.integrals, 0, 0, 0])
+    integrals[3] *= 1.1
+    const shares = new Float64Array(310)
+    const results = checkLine({ ...input, groups: [...input.groups, dark], integrals, sums: [...input.sums, new Uint32Array(width * height)], meter: { light, clipped: shares, black: shares } })
+    expect(valueOf(results, 'light-drift', 1)).toBeCloseTo(0, 6)
+    expect(valueOf(results, 'level-drift', 1)).toBeGreaterThan(5)
+  })
+
+  it('say why something could not be measured', () => {
+    const results = checkLine(solved(line(1)))
+    expect(results.find(({ checkId }) => checkId === 'camera-motion')).toMatchObject({ value: null, passed: true, message: expect.stringMatching(/no other repetition/) })
+    expect(results.find(({ checkId }) => checkId === 'noise')).toMatchObject({ value: null, passed: true })
+  })
+})
+
+describe('proposed rejections', () => {
+  const bumped = (repetitions: number, repetition: number) => checkLine(line(repetitions, [{ repetition, from: 0, dx: 0.3, stays: false }]))
+
+  it('reject the bumped repetition when two good ones remain', () => {
+    const { proposed, rejected, flags } = proposeRejections(bumped(3, 2))
+    expect({ proposed, rejected }).toEqual({ proposed: [2], rejected: [2] })
+    expect(flags).toEqual([{ code: 'repetition-rejected', severity: 'warning', message: expect.stringMatching(/^Repetition 2 was rejected\. Camera motion 0\.(29|3)\d* px, limit 0\.05 px\./) }])
+  })
+
+  it('ask a person when fewer than two would remain', () => {
+    const { proposed, rejected, flags } = proposeRejections(checkLine(line(2, [{ repetition: 2, from: 0, dx: 0.3, stays: false }])))
+    expect(proposed).toEqual([1, 2])
+    expect(rejected).toEqual([])
+    expect(flags).toMatchObject([{ code: 'too-few-good-repetitions', severity: 'problem' }])
+  })
+
+  it('reject nothing for a check that only informs', () => {
+    const input = line(3)
+    const clipped = new Float64Array(input.meter.clipped.length).fill(0.2)
+    expect(proposeRejections(checkLine({ ...input, meter: { ...input.meter, clipped } }))).toEqual({ proposed: [], rejected: [], flags: [] })
+  })
+})
