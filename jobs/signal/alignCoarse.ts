@@ -1,4 +1,4 @@
-import { explained, fitGain, type AlignProblem } from './alignProblem'
+import type { AlignProblem } from './alignProblem'
 import { beatAmplitude } from './lampTones'
 import { windowMean } from './lightPrediction'
 import { fft, inverseFft, powerOfTwo } from './spectrum'
@@ -73,32 +73,46 @@ function searchPlan(problem: AlignProblem) {
   return { step, framesPerStep, phases, drifts, size }
 }
 
-/** Scores of all lags of one predicted series; lag l puts light sample 0 on prediction sample l. */
-function scanLags(problem: AlignProblem, light: Series, spectrum: { re: Float64Array, im: Float64Array }, predicted: Series, size: number, visit: (lag: number, score: number) => void): void {
-  const n = light.values.length
-  const m = predicted.values.length
-  const re = new Float64Array(size)
-  const im = new Float64Array(size)
-  re.set(predicted.values)
+interface Scratch {
+  re: Float64Array
+  im: Float64Array
+}
+
+/** Circular cross-correlation of the prediction with the light's spectrum, left in `scratch.re`. */
+function correlate(spectrum: Scratch, predicted: Float64Array, scratch: Scratch): void {
+  const { re, im } = scratch
+  re.fill(0)
+  im.fill(0)
+  re.set(predicted)
   fft(re, im)
-  for (let k = 0; k < size; k++) {
+  for (let k = 0; k < re.length; k++) {
     const real = re[k] * spectrum.re[k] + im[k] * spectrum.im[k]
     im[k] = im[k] * spectrum.re[k] - re[k] * spectrum.im[k]
     re[k] = real
   }
   inverseFft(re, im)
+}
+
+/** Scores (see `explained`) of all lags of one predicted series; lag l puts light sample 0 on prediction sample l. */
+function scanLags(light: Series, predicted: Series, correlation: Float64Array, visit: (lag: number, score: number) => void): void {
+  const n = light.values.length
+  const m = predicted.values.length
+  const size = correlation.length
   const least = Math.max(12, leastOverlap * Math.min(n, m))
+  const floor = 1e-6 * light.squares[n] / n + Number.MIN_VALUE
   for (let lag = -n + 1; lag < m; lag++) {
     const from = Math.max(0, -lag)
     const to = Math.min(n, m - lag)
     const count = to - from
     if (count < least) continue
     const y = light.sum[to] - light.sum[from]
-    const yy = light.squares[to] - light.squares[from]
     const w = predicted.sum[to + lag] - predicted.sum[from + lag]
     const ww = predicted.squares[to + lag] - predicted.squares[from + lag]
-    const fit = fitGain(count, w, ww, y, yy, re[(lag + size) % size])
-    visit(lag, explained(problem, { ...fit, frames: count }) * problem.light.length / n)
+    const sww = ww - w * w / count
+    const swy = correlation[lag < 0 ? lag + size : lag] - w * y / count
+    if (swy <= 0 || !(sww > 1e-12 * ww)) continue
+    const syy = light.squares[to] - light.squares[from] - y * y / count
+    visit(lag, 0.5 * count * Math.log((syy + floor * count) / (Math.max(0, syy - swy * swy / sww) + floor * count)) / n)
   }
 }
 
@@ -115,8 +129,12 @@ export function coarseCandidates(problem: AlignProblem, most: number): CoarseCan
   const spectrum = { re: new Float64Array(size), im: new Float64Array(size) }
   spectrum.re.set(light.values)
   fft(spectrum.re, spectrum.im)
+  const scratch = { re: new Float64Array(size), im: new Float64Array(size) }
   const window = framesPerStep === 1 ? problem.exposureSeconds : step
-  const best = new Map<number, CoarseCandidate>()
+  const half = problem.times[problem.times.length - 1] / 2
+  // Two cells a step, the first for the earliest offset: the best score in each, and what made it.
+  const cells = 2 * size + 8
+  const best = { score: new Float64Array(cells).fill(-1), offset: new Float64Array(cells), drift: new Float64Array(cells) }
   for (let d = 0; d < drifts; d++) {
     const driftPpm = drifts === 1 ? 0 : problem.maxDriftPpm * (2 * (d + 0.5) / drifts - 1)
     const stretched = step * (1 + driftPpm * 1e-6)
@@ -126,15 +144,22 @@ export function coarseCandidates(problem: AlignProblem, most: number): CoarseCan
       if (length < 2) continue
       const values = new Float64Array(length)
       for (let j = 0; j < length; j++) values[j] = windowMean(problem.integrals, start + j * stretched, window)
-      scanLags(problem, light, spectrum, prefixed(values), size, (lag, score) => {
-        const middle = lag * stretched + start + driftPpm * 1e-6 * problem.times[problem.times.length - 1] / 2
-        const cell = Math.round(middle / step * 2)
-        const kept = best.get(cell)
-        if (!kept || score > kept.score) best.set(cell, { offsetSeconds: lag * stretched + start, driftPpm, score, stepSeconds: step / phases })
+      correlate(spectrum, values, scratch)
+      scanLags(light, prefixed(values), scratch.re, (lag, score) => {
+        const offset = lag * stretched + start
+        const cell = Math.min(cells - 1, Math.max(0, Math.round((offset + driftPpm * 1e-6 * half) / step * 2) + 2 * light.values.length + 2))
+        if (score <= best.score[cell]) return
+        best.score[cell] = score
+        best.offset[cell] = offset
+        best.drift[cell] = driftPpm
       })
     }
   }
-  return separated(best, most)
+  const candidates: CoarseCandidate[] = []
+  for (const cell of separated(best.score, most)) {
+    candidates.push({ offsetSeconds: best.offset[cell], driftPpm: best.drift[cell], score: best.score[cell], stepSeconds: step / phases })
+  }
+  return candidates
 }
 
 /** A candidate this many nats a frame below the best one cannot win; a few are kept all the same, to compare with. */
@@ -142,15 +167,15 @@ const hopeless = 1.5
 const fewest = 4
 
 /** The best cells, leaving out those next to a better one. */
-function separated(cells: Map<number, CoarseCandidate>, most: number): CoarseCandidate[] {
+function separated(score: Float64Array, most: number): number[] {
+  const order = Array.from(score.keys()).filter(cell => score[cell] >= 0).sort((a, b) => score[b] - score[a])
+  const kept: number[] = []
   const taken = new Set<number>()
-  const kept: CoarseCandidate[] = []
-  for (const [cell, candidate] of [...cells].sort((a, b) => b[1].score - a[1].score)) {
-    if (kept.length >= most || (kept.length >= fewest && candidate.score < kept[0].score - hopeless)) break
-    if (!taken.has(cell - 1) && !taken.has(cell + 1)) {
-      taken.add(cell)
-      kept.push(candidate)
-    }
+  for (const cell of order) {
+    if (kept.length >= most || (kept.length >= fewest && score[cell] < score[kept[0]] - hopeless)) break
+    if (taken.has(cell - 1) || taken.has(cell + 1)) continue
+    taken.add(cell)
+    kept.push(cell)
   }
   return kept
 }
