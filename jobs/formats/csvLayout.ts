@@ -20,7 +20,7 @@ const quote = 60
 
 /**
  * Find out how a DAQ text file is laid out: what separates its columns, where its numbers begin, what its columns are
- * called. Numbers begin at the first two lines in a row that are all numbers (or empty) in the same two or more columns;
+ * called. Numbers begin at the first line of two or more columns that are all numbers or empty, when the line after it is so too;
  * whatever lies before is preamble, its last line the header, or the last but one when a row of units follows.
  *
  * @param lines the file's beginning, without line ends; the last one must be whole
@@ -54,8 +54,8 @@ function firstDataLine(lines: readonly string[], delimiter: string): number {
   const filled = lines.flatMap((line, i) => line.trim() ? [i] : [])
   const columns = filled.map(i => numericColumns(lines[i], delimiter))
   const least = delimiter ? 2 : 1
-  // A file with a single data row is told so later, so its last line may stand alone.
-  const at = columns.findIndex((count, i) => count >= least && (count === columns[i + 1] || i === columns.length - 1))
+  // The next row may lack a cell, and the last line may stand alone: both are told later, by line.
+  const at = columns.findIndex((count, i) => count >= least && (columns[i + 1] > 0 || i === columns.length - 1))
   return at < 0 ? -1 : filled[at]
 }
 

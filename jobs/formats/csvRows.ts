@@ -36,7 +36,7 @@ export class CsvRows {
       this.row(bytes, at, end)
       at = end + 1
     }
-    this.carry = bytes.slice(at)
+    this.carry = new Uint8Array(bytes.subarray(at))
   }
 
   /** Takes the last line if it is whole. @returns its number when it ends early and was left out */

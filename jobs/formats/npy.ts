@@ -97,6 +97,8 @@ export function readNpyHeader(bytes: Uint8Array): NpyHeader {
 export function readNpy(bytes: Uint8Array): NpyArray {
   const { dtype, shape, dataOffset, dataBytes } = readNpyHeader(bytes)
   if (bytes.length < dataOffset + dataBytes) throw new NpyError(`The NPY file holds ${bytes.length - dataOffset} of ${dataBytes} bytes of data. Export it again.`)
-  const copy = bytes.slice(dataOffset, dataOffset + dataBytes)
-  return { dtype, shape, data: new dtypes[dtype].array(copy.buffer, copy.byteOffset, dataBytes / dtypes[dtype].array.BYTES_PER_ELEMENT) } as NpyArray
+  // Not slice(): that of Node's Buffer shares the memory, at any alignment.
+  const copy = new Uint8Array(dataBytes)
+  copy.set(bytes.subarray(dataOffset, dataOffset + dataBytes))
+  return { dtype, shape, data: new dtypes[dtype].array(copy.buffer) } as NpyArray
 }

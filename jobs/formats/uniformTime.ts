@@ -31,6 +31,9 @@ export class UniformTime {
   private readonly extremes: Deviation[] = []
   private lowest: Deviation | null = null
   private highest: Deviation | null = null
+  /** The largest change of the deviation from one row to the next. */
+  private jump: Deviation = { value: 0, row: 0, line: 0 }
+  private before = 0
 
   /** @throws RecordError `time-not-uniform` when the time does not move on */
   add(time: number, line: number): void {
@@ -55,8 +58,9 @@ export class UniformTime {
       const off = value - row * (period - this.period)
       if (Math.abs(off) > Math.abs(worst.value)) worst = { value: off, row, line }
     }
-    if (Math.abs(worst.value) > toleranceSamples * period) throw new RecordError('time-not-uniform', `The samples are not evenly spaced in time: line ${worst.line} is ${(1000 * Math.abs(worst.value)).toPrecision(3)} ms ${worst.value > 0 ? 'late' : 'early'}. If the logger's clock was even, leave the time column out and give the sample rate; otherwise record again.`)
-    return { sampleRateHz: Number((1 / period).toPrecision(12)), startSeconds: this.first, flags: [] }
+    if (Math.abs(worst.value) <= toleranceSamples * period) return { sampleRateHz: Number((1 / period).toPrecision(12)), startSeconds: this.first, flags: [] }
+    if (Math.abs(this.jump.value) > period / 2) throw new RecordError('time-not-uniform', `The samples are not evenly spaced in time: at line ${this.jump.line} the time steps by ${(1000 * (this.period + this.jump.value)).toPrecision(3)} ms instead of ${(1000 * this.period).toPrecision(3)} ms. If the logger’s clock was even, leave the time column out and give the sample rate; otherwise record again.`)
+    throw new RecordError('time-not-uniform', `The samples are not evenly spaced in time: line ${worst.line} is ${(1000 * Math.abs(worst.value)).toPrecision(3)} ms ${worst.value > 0 ? 'late' : 'early'}. If the logger’s clock was even, leave the time column out and give the sample rate; otherwise record again.`)
   }
 
   /** The first rows wait until the period can be guessed well. */
@@ -73,6 +77,8 @@ export class UniformTime {
 
   private judge(row: number, time: number, line: number): void {
     const value = time - this.first - row * this.period
+    if (row && Math.abs(value - this.before) > Math.abs(this.jump.value)) this.jump = { value: value - this.before, row, line }
+    this.before = value
     if (!this.lowest || value < this.lowest.value) this.lowest = { value, row, line }
     if (!this.highest || value > this.highest.value) this.highest = { value, row, line }
     if (row % blockLength === blockLength - 1) this.closeBlock()
