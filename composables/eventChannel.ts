@@ -35,89 +35,105 @@ const reopenSeconds = [1, 2, 5, 10, 30]
 /**
  * One stream per browser: the tab that holds the lock reads the stream and tells the others; when it goes, the next
  * in line takes over, and everybody loads again, because something may have happened in between. Without locks or
- * broadcast every tab reads its own. Returns a function that leaves.
+ * broadcast every tab reads its own.
  */
-export function openEventChannel(name: string, tools: ChannelTools, listener: ChannelListener): () => void {
-  const leaving = new AbortController()
-  let broadcast: BroadcastLike | undefined
-  let source: SourceLike | undefined
-  let status: LiveStatus = 'connecting'
-  let lastId = ''
-  let failures = 0
-  let timer: ReturnType<typeof setTimeout> | undefined
+export class EventChannel {
+  private readonly leaving = new AbortController()
+  private broadcast?: BroadcastLike
+  private source?: SourceLike
+  private status: LiveStatus = 'connecting'
+  private lastId = ''
+  private failures = 0
+  private timer?: ReturnType<typeof setTimeout>
 
-  const tell = (message: Message) => broadcast?.postMessage(message)
-  function setStatus(next: LiveStatus) {
-    status = next
-    listener.status(next)
-    if (source) tell({ kind: 'status', status: next })
+  constructor(private readonly name: string, private readonly tools: ChannelTools, private readonly listener: ChannelListener) {
+    if (tools.locks && tools.openBroadcast) this.join(tools.locks, tools.openBroadcast)
+    else this.lead()
   }
-  function deliver(message: EventMessage) {
-    if (message.id) lastId = message.id
-    listener.event(message.type, message.data)
+
+  leave() {
+    this.leaving.abort()
+    clearTimeout(this.timer)
+    this.source?.close()
+    this.broadcast?.close()
   }
-  function open() {
-    const opened = source = tools.openSource(lastId ? `/api/events?lastEventId=${encodeURIComponent(lastId)}` : '/api/events')
+
+  private join(locks: NonNullable<ChannelTools['locks']>, openBroadcast: NonNullable<ChannelTools['openBroadcast']>) {
+    this.broadcast = openBroadcast(this.name)
+    this.broadcast.onmessage = ({ data }: MessageEvent<Message>) => this.hear(data)
+    this.tell({ kind: 'hello' })
+    locks.request(this.name, { signal: this.leaving.signal }, () => {
+      this.lead()
+      return new Promise<void>(release => this.leaving.signal.addEventListener('abort', () => release(), { once: true }))
+    }).catch((cause: unknown) => {
+      if (!this.leaving.signal.aborted) throw cause
+    })
+  }
+
+  private lead() {
+    const takesOver = this.status !== 'connecting'
+    this.open()
+    if (takesOver) this.announceGap()
+  }
+
+  private open() {
+    const opened = this.source = this.tools.openSource(this.lastId ? `/api/events?lastEventId=${encodeURIComponent(this.lastId)}` : '/api/events')
     opened.onopen = () => {
-      failures = 0
-      setStatus('live')
+      this.failures = 0
+      this.setStatus('live')
     }
     opened.onerror = () => {
-      setStatus('reconnecting')
-      if (opened.readyState === closed) reopen()
+      this.setStatus('reconnecting')
+      if (opened.readyState === closed) this.reopen()
     }
     for (const type of [...eventTypes, resyncEvent] as LiveType[]) {
-      opened.addEventListener(type, (event) => {
-        const message: EventMessage = { kind: 'event', id: event.lastEventId, type, data: parse(event.data) }
-        deliver(message)
-        tell(message)
-      })
+      opened.addEventListener(type, event => this.pass({ kind: 'event', id: event.lastEventId, type, data: parse(event.data) }))
     }
   }
-  function reopen() {
-    if (leaving.signal.aborted) return
-    const seconds = reopenSeconds[Math.min(failures++, reopenSeconds.length - 1)]!
-    listener.refused()
-    timer = setTimeout(() => {
-      open()
-      announceGap()
+
+  /** The browser gives up for good when the server answers anything but a stream; then we try again, ever slower. */
+  private reopen() {
+    if (this.leaving.signal.aborted) return
+    const seconds = reopenSeconds[Math.min(this.failures++, reopenSeconds.length - 1)]!
+    this.listener.refused()
+    this.timer = setTimeout(() => {
+      this.open()
+      this.announceGap()
     }, seconds * 1000)
   }
-  function announceGap() {
-    const message: EventMessage = { kind: 'event', id: '', type: resyncEvent, data: null }
-    deliver(message)
-    tell(message)
-  }
-  function lead() {
-    const takesOver = status !== 'connecting'
-    open()
-    if (takesOver) announceGap()
+
+  private announceGap() {
+    this.pass({ kind: 'event', id: '', type: resyncEvent, data: null })
   }
 
-  if (tools.locks && tools.openBroadcast) {
-    broadcast = tools.openBroadcast(name)
-    broadcast.onmessage = ({ data }: MessageEvent<Message>) => {
-      if (data.kind === 'hello') tell({ kind: 'status', status })
-      else if (source) return
-      else if (data.kind === 'status') setStatus(data.status)
-      else deliver(data)
+  private pass(message: EventMessage) {
+    this.deliver(message)
+    this.tell(message)
+  }
+
+  private deliver(message: EventMessage) {
+    if (message.id) this.lastId = message.id
+    this.listener.event(message.type, message.data)
+  }
+
+  private setStatus(next: LiveStatus) {
+    this.status = next
+    this.listener.status(next)
+    if (this.source) this.tell({ kind: 'status', status: next })
+  }
+
+  private hear(message: Message) {
+    if (this.source) {
+      if (message.kind === 'hello') this.tell({ kind: 'status', status: this.status })
+    } else if (message.kind === 'status') {
+      this.setStatus(message.status)
+    } else if (message.kind === 'event') {
+      this.deliver(message)
     }
-    tell({ kind: 'hello' })
-    tools.locks.request(name, { signal: leaving.signal }, () => {
-      lead()
-      return new Promise<void>(release => leaving.signal.addEventListener('abort', () => release(), { once: true }))
-    }).catch((cause: unknown) => {
-      if (!leaving.signal.aborted) throw cause
-    })
-  } else {
-    lead()
   }
 
-  return () => {
-    leaving.abort()
-    clearTimeout(timer)
-    source?.close()
-    broadcast?.close()
+  private tell(message: Message) {
+    this.broadcast?.postMessage(message)
   }
 }
 

@@ -7,7 +7,7 @@ type Listener = (payload: LivePayload) => void
 export const useLiveStore = defineStore('live', () => {
   const status = ref<LiveStatus>('connecting')
   const listeners = new Map<EventType | 'resync', Set<Listener>>()
-  let leave: (() => void) | undefined
+  let channel: EventChannel | undefined
 
   function on(type: EventType | 'resync', listener: Listener): () => void {
     const set = listeners.get(type) ?? new Set()
@@ -17,7 +17,7 @@ export const useLiveStore = defineStore('live', () => {
   function start(userId: string) {
     stop()
     const session = useSessionStore()
-    leave = openEventChannel(`lampsum-live-${userId}`, {
+    channel = new EventChannel(`lampsum-live-${userId}`, {
       openSource: url => new EventSource(url),
       openBroadcast: 'BroadcastChannel' in window ? name => new BroadcastChannel(name) : undefined,
       locks: navigator.locks,
@@ -31,8 +31,8 @@ export const useLiveStore = defineStore('live', () => {
     })
   }
   function stop() {
-    leave?.()
-    leave = undefined
+    channel?.leave()
+    channel = undefined
     status.value = 'connecting'
   }
   return { status, on, start, stop }

@@ -18,7 +18,6 @@ export interface Sending {
 }
 
 const atOnce = 3
-const retryDelays = [0, 1000, 3000, 5000, 10_000, 20_000]
 const againSeconds = 15
 const memory = (uploadId: string) => `lampsum-upload-${uploadId}`
 
@@ -68,33 +67,21 @@ export const useUploadsStore = defineStore('uploads', () => {
     const known = item.uploadId && localStorage.getItem(memory(item.uploadId))
     if (known && known !== sample) return stop(item, 'This file has the name and size of the unfinished one, but other content. Pick the right file, or remove this upload.')
     if (find(item.key)?.state !== 'sending') return
-    const { Upload: TusUpload } = await import('tus-js-client')
-    const transfer = new TusUpload(file, optionsFor(item, file, sample, () => transfer))
-    transfers.set(item.key, transfer)
-    transfer.start()
+    transfers.set(item.key, await startTransfer(file, item, {
+      located: (uploadId) => {
+        item.uploadId = uploadId
+        localStorage.setItem(memory(uploadId), sample)
+      },
+      progress: sent => progress(item, sent),
+      sent: () => verifying(item),
+      failed: cause => failed(item, cause),
+    }))
+    if (find(item.key)?.state !== 'sending') await transfers.get(item.key)?.abort()
   }
-
-  function optionsFor(item: Sending, file: File, sample: string, self: () => Transfer) {
-    return {
-      // Without an endpoint a refused resume cannot turn into a fresh upload of the same bytes.
-      ...(item.uploadId ? { uploadUrl: `/api/uploads/${item.uploadId}` } : { endpoint: '/api/uploads' }),
-      retryDelays, chunkSize: Infinity, storeFingerprintForResuming: false, removeFingerprintOnSuccess: true,
-      metadata: { filename: file.name, filetype: file.type, acquisitionId: item.acquisitionId, kind: item.kind, part: '1' },
-      onUploadUrlAvailable: () => {
-        const url = self().url
-        if (!url) return
-        item.uploadId = url.split('/').pop() ?? null
-        self().options.endpoint = null
-        if (item.uploadId) localStorage.setItem(memory(item.uploadId), sample)
-      },
-      onProgress: (sent: number) => progress(item, sent),
-      onSuccess: () => verifying(item),
-      onError: (cause: unknown) => {
-        const problem = uploadProblem(cause)
-        if (problem.waits === 'person') stop(item, problem.message)
-        else hold(item, problem.waits, problem.message)
-      },
-    }
+  function failed(item: Sending, cause: unknown) {
+    const { waits, message } = uploadProblem(cause)
+    if (waits === 'person') stop(item, message)
+    else hold(item, waits, message)
   }
 
   function progress(item: Sending, sent: number) {
@@ -145,6 +132,7 @@ export const useUploadsStore = defineStore('uploads', () => {
   }
   function hold(item: Sending, why: 'network' | 'sign-in', message: string) {
     Object.assign(item, { state: 'waiting', message, bytesPerSecond: null })
+    if (why === 'sign-in') void session.load().catch(() => undefined)
     if (why === 'network') setTimeout(() => find(item.key)?.state === 'waiting' && resume(item), againSeconds * 1000)
     next()
   }
