@@ -1,6 +1,6 @@
 /**
- * Colour maps of 256 steps, packed for ImageData (little-endian RGBA). Built in OKLab (Björn Ottosson, 2020: "A
- * perceptual color space for image processing"), where even steps of L look even; chroma gives way where sRGB ends.
+ * Colour maps of 256 steps, packed for ImageData (little-endian RGBA). Even steps of CIE 1976 L*; hue and chroma in
+ * OKLab (Björn Ottosson, 2020: "A perceptual color space for image processing"), chroma giving way where sRGB ends.
  * Gray: scenes and means. Ember (dark to pale amber): noise, amounts from 0 up. Split (blue · black · amber): p and q,
  * with 0 in the middle.
  */
@@ -22,25 +22,42 @@ function okLabToLinear(l: number, a: number, b: number): Rgb {
 const inGamut = (rgb: Rgb) => rgb.every(value => value >= -1e-4 && value <= 1.0001)
 const encode = (value: number) => Math.round(255 * Math.max(0, Math.min(1, value <= 0.0031308 ? 12.92 * value : 1.055 * value ** (1 / 2.4) - 0.055)))
 
-/** Lightness 0…1, chroma, hue in degrees to sRGB codes; chroma is lowered until the colour exists. */
-export function okLchToRgb(lightness: number, chroma: number, hueDeg: number): Rgb {
+/** Lightness 0…1, chroma, hue in degrees to linear sRGB; chroma is lowered until the colour exists. */
+function okLchToLinear(lightness: number, chroma: number, hueDeg: number): Rgb {
   const at = (c: number) => okLabToLinear(lightness, c * Math.cos(hueDeg * Math.PI / 180), c * Math.sin(hueDeg * Math.PI / 180))
-  if (inGamut(at(chroma))) return at(chroma).map(encode) as Rgb
-  let [low, high] = [0, chroma]
-  for (let step = 0; step < 20; step++) {
+  if (inGamut(at(chroma))) return at(chroma)
+  return at(bisect(0, chroma, c => inGamut(at(c))))
+}
+export function okLchToRgb(lightness: number, chroma: number, hueDeg: number): Rgb {
+  return okLchToLinear(lightness, chroma, hueDeg).map(encode) as Rgb
+}
+
+/** The largest value between low and high that still passes. */
+function bisect(low: number, high: number, passes: (value: number) => boolean): number {
+  for (let step = 0; step < 24; step++) {
     const middle = (low + high) / 2
-    if (inGamut(at(middle))) low = middle
+    if (passes(middle)) low = middle
     else high = middle
   }
-  return at(low).map(encode) as Rgb
+  return low
+}
+
+/** A colour of this CIE 1976 L* (0…100): chroma and hue in OKLCh, lightness moved until the luminance fits. */
+function ofLightness(lStar: number, chroma: number, hueDeg: number): Rgb {
+  const luminance = lStar > 8 ? ((lStar + 16) / 116) ** 3 : lStar * (3 / 29) ** 3
+  const lightness = bisect(0, 1, (candidate) => {
+    const [red, green, blue] = okLchToLinear(candidate, chroma, hueDeg)
+    return 0.2126 * red + 0.7152 * green + 0.0722 * blue <= luminance
+  })
+  return okLchToRgb(lightness, chroma, hueDeg)
 }
 
 const maps: Record<ColourMapName, (share: number) => Rgb> = {
   gray: share => Array(3).fill(Math.round(255 * share)) as Rgb,
-  ember: share => okLchToRgb(0.14 + 0.82 * share, 0.16 * Math.sin(Math.PI * Math.min(1, share * 0.9 + 0.05)), 35 + 60 * share),
+  ember: share => ofLightness(3 + 93 * share, 0.17 * Math.sin(Math.PI * (0.08 + 0.84 * share)), 35 + 60 * share),
   split: (share) => {
     const way = Math.abs(2 * share - 1)
-    return okLchToRgb(0.16 + 0.72 * way, 0.17 * Math.min(1, way * 1.6), share < 0.5 ? 250 : 65)
+    return ofLightness(3 + 82 * way, 0.17 * Math.min(1, way * 1.6), share < 0.5 ? 250 : 65)
   },
 }
 

@@ -9,15 +9,20 @@ const pieceBytes = 64 * 1024
 export async function sampleFile(file: Blob): Promise<string> {
   let low = 0x811C9DC5
   let high = 0x01000193
-  const step = Math.max(1, Math.floor((file.size - pieceBytes) / (pieces - 1)))
-  for (let start = 0, piece = 0; start < file.size && piece < pieces; start += step, piece++) {
+  for (const start of pieceStarts(file.size)) {
     const bytes = new Uint8Array(await file.slice(start, start + pieceBytes).arrayBuffer())
     for (const byte of bytes) {
       low = Math.imul(low ^ byte, 0x01000193)
       high = Math.imul(high ^ byte, 0x85EBCA6B) + 1
     }
-    if (step < pieceBytes && start + pieceBytes >= file.size) break
   }
   const hex = (value: number) => (value >>> 0).toString(16).padStart(8, '0')
   return `${file.size}-${hex(low)}${hex(high)}`
+}
+
+/** From the first byte to the last: the whole file when it is small. */
+function pieceStarts(size: number): number[] {
+  const last = Math.max(0, size - pieceBytes)
+  const count = Math.min(pieces, Math.ceil(last / pieceBytes) + 1)
+  return Array.from({ length: count }, (_, index) => count === 1 ? 0 : Math.round(last * index / (count - 1)))
 }
