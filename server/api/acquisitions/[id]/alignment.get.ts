@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/acquisitions/:id/alignment', ({ params }) => getAlignment(useDatabase(), params.id!))

@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/acquisitions/:id', ({ params }) => getAcquisition(useDatabase(), params.id!))

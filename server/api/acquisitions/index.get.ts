@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/acquisitions', ({ query }) => listAcquisitions(useDatabase(), query))

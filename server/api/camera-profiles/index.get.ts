@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/camera-profiles', ({ query }) => listCameraProfiles(useDatabase(), query))

@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/campaigns/:id/guests', ({ campaignId }) => listGuests(useDatabase(), campaignId))

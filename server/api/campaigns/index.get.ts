@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/campaigns', ({ user, query }) => listCampaigns(useDatabase(), user, query))

@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/frame-sets/:id', ({ params }) => getFrameSet(useDatabase(), params.id!))

@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/home', ({ user }) => readHome(useDatabase(), user, () => useFileStore().freeBytes()))

@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/jobs/:id', ({ params }) => getJob(useDatabase(), params.id!))

@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/jobs', ({ query }) => listJobs(useDatabase(), query))

@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/queue', async () => readQueue(useDatabase(), await useFileStore().freeBytes()))

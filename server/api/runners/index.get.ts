@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/runners', ({ query }) => listRunners(useDatabase(), query))

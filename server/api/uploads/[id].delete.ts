@@ -1,0 +1,1 @@
+export default defineTusRoute('DELETE /api/uploads/:id')

@@ -1,0 +1,1 @@
+export default defineTusRoute('HEAD /api/uploads/:id')

@@ -1,0 +1,1 @@
+export default defineTusRoute('OPTIONS /api/uploads/:id')

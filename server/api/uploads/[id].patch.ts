@@ -1,0 +1,1 @@
+export default defineTusRoute('PATCH /api/uploads/:id')

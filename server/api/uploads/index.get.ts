@@ -1,0 +1,1 @@
+export default defineRoute('GET /api/uploads', ({ user, query }) => listUploads(useDatabase(), user, query))

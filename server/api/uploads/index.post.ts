@@ -1,0 +1,1 @@
+export default defineTusRoute('POST /api/uploads')

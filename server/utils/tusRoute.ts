@@ -1,0 +1,43 @@
+import type { IncomingMessage } from 'node:http'
+import { isError, type H3Event } from 'h3'
+import type { ErrorBody } from '#shared/errors'
+import type { RouteKey } from '#shared/routes'
+import type { User } from '#shared/schemas/people'
+import { storeFolders } from '../store/fileStore'
+import { useDatabase } from './database'
+import { useFileStore } from './files'
+import { TusServer } from './tusServer'
+
+const users = new WeakMap<IncomingMessage, User>()
+let server: TusServer | undefined
+
+function useTusServer(): TusServer {
+  server ??= new TusServer({
+    folder: storeFolders(useRuntimeConfig().dataDir).incoming, database: useDatabase, freeBytes: () => useFileStore().freeBytes(),
+    userOf: request => users.get(request)!,
+  })
+  return server
+}
+
+/** A route of the tus protocol, with the role and session checks of every other route. */
+export function defineTusRoute<K extends Extract<RouteKey, `${string} /api/uploads${string}`>>(key: K) {
+  const route = defineRoute(key, async ({ event, user }) => {
+    if (user) users.set(event.node.req, user)
+    await useTusServer().handle(event.node.req, event.node.res)
+  })
+  return defineEventHandler(async (event) => {
+    try {
+      return await route(event)
+    } catch (error) {
+      if (event.method === 'HEAD' && isError<ErrorBody>(error) && error.data?.code === 'database-away') return answerLocked(event)
+      throw error
+    }
+  })
+}
+
+/** tus clients forget an upload and start afresh when HEAD fails with 5xx; 423 makes them wait and ask again. */
+function answerLocked(event: H3Event): null {
+  setResponseStatus(event, 423)
+  setResponseHeaders(event, { 'tus-resumable': '1.0.0', 'retry-after': 2 })
+  return null
+}
