@@ -6,7 +6,7 @@ import { searchAlignment } from './alignSearch'
 import { lampTones } from './lampTones'
 import { createLightIntegrals, predictFrameLight } from './lightPrediction'
 
-/** Clip or record too short or without light to be aligned. */
+/** Clip or record too short to be aligned. */
 export class AlignError extends Error {
   override name = 'AlignError'
 }
@@ -65,14 +65,14 @@ function pose(input: AlignInput): AlignProblem {
  * out, at most two or 0.3 % of the clip.
  *
  * @returns record time = offsetSeconds + (1 + driftPpm·1e-6) · clip time; residual is rms error over the span of the
- *   prediction; confidence 0…1 with its reasons (`evidence`), below `alignmentReviewBelow` a person should look
- * @throws AlignError when there are fewer than 12 measured frames or nothing overlaps
+ *   prediction; confidence 0…1 with its reasons (`evidence`), below `alignmentReviewBelow` a person should look; offset 0 with confidence 0 when nothing fits
+ * @throws AlignError when there are fewer than 12 measured frames or 64 samples
  * Accuracy on seeded truth, clips of 20 s and more with edges or beat: offset 0.01 frame, drift 3 ppm.
  */
 export function alignClip(input: AlignInput): AlignResult {
   const first = attempt(input, input.frameLight)
   const odd = oddFrames(input.frameLight, first.predicted)
-  if (odd.length === 0 || odd.length > Math.max(2, mostOddShare * input.frameLight.length)) return first
+  if (first.confidence === 0 || odd.length === 0 || odd.length > Math.max(2, mostOddShare * input.frameLight.length)) return first
   const light = input.frameLight.slice()
   for (const frame of odd) light[frame] = Number.NaN
   const second = attempt(input, light)
@@ -85,7 +85,7 @@ export function alignClip(input: AlignInput): AlignResult {
  *
  * @returns as `alignClip`, with method `manual`; a reason tells when a better fit lies close by. NaN residual is not
  *   possible: an alignment under which the record covers fewer than 5 frames has residual 1 and confidence 0
- * @throws AlignError as `alignClip`, except for missing overlap
+ * @throws AlignError as `alignClip`
  */
 export function judgeAlignment(input: AlignInput, manual: { offsetSeconds: number, driftPpm: number, version?: number }): AlignResult {
   const problem = pose(input)
@@ -93,7 +93,9 @@ export function judgeAlignment(input: AlignInput, manual: { offsetSeconds: numbe
   const pivotSeconds = problem.times[problem.times.length - 1] / 2
   const middleSeconds = manual.offsetSeconds + (1 + manual.driftPpm * 1e-6) * pivotSeconds
   const set = evaluateAt(problem, all, middleSeconds, pivotSeconds, manual.driftPpm)
-  if (set.frames < 5) return uncovered(input, manual)
+  if (set.frames < 5) {
+    return unjudged(input, { ...manual, method: 'manual', version: manual.version ?? 1 }, 'With this offset the record covers hardly any frame of the clip; check its sign.')
+  }
   const near = polish(problem, set, all)
   const deviations = { middleDeviationSeconds: near.middleDeviationSeconds, driftDeviationPpm: near.driftDeviationPpm }
   const result = report(input, problem, { best: { ...set, ...deviations }, second: null })
@@ -103,11 +105,10 @@ export function judgeAlignment(input: AlignInput, manual: { offsetSeconds: numbe
   return { ...result, offsetSeconds: manual.offsetSeconds, driftPpm: manual.driftPpm, method: 'manual', version: manual.version ?? 1 }
 }
 
-function uncovered(input: AlignInput, manual: { offsetSeconds: number, driftPpm: number, version?: number }): AlignResult {
-  const reasons = ['With this offset the record covers hardly any frame of the clip; check its sign.']
+function unjudged(input: AlignInput, alignment: Pick<Alignment, 'offsetSeconds' | 'driftPpm' | 'method' | 'version'>, reason: string): AlignResult {
   return {
-    offsetSeconds: manual.offsetSeconds, driftPpm: manual.driftPpm, residual: 1, confidence: 0, method: 'manual', version: manual.version ?? 1,
-    evidence: { gain: 0, background: 0, secondBestRatio: null, secondBestOffsetSeconds: null, edges: 0, beat: false, reasons },
+    ...alignment, residual: 1, confidence: 0,
+    evidence: { gain: 0, background: 0, secondBestRatio: null, secondBestOffsetSeconds: null, edges: 0, beat: false, reasons: [reason] },
     predicted: new Float64Array(input.frameLight.length).fill(Number.NaN),
   }
 }
@@ -115,7 +116,10 @@ function uncovered(input: AlignInput, manual: { offsetSeconds: number, driftPpm:
 function attempt(input: AlignInput, frameLight: Float64Array): AlignResult {
   const problem = pose({ ...input, frameLight })
   const found = searchAlignment(problem)
-  if (!found) throw new AlignError('Clip and record do not overlap enough to be aligned; check that they belong together, or set offset and drift by hand.')
+  if (!found) {
+    const reason = 'The light of the clip and the lamp signal have nothing in common; check that clip, record and channel belong together, or set offset and drift by hand.'
+    return unjudged(input, { offsetSeconds: 0, driftPpm: 0, method: 'light', version: 1 }, reason)
+  }
   return report(input, problem, found)
 }
 

@@ -1,9 +1,10 @@
 import { fitSine3, fitSine4, frequencyDeviationHz, SineFitError, wrapDegrees, type SineFit } from './sineFit'
 
 export interface HarmonicStretch {
-  /** Samples of the stretch alone. */
+  /** Samples of the stretch alone, at a rate of its own. */
   samples: ArrayLike<number>
-  /** Record sample that element 0 is. */
+  sampleRateHz: number
+  /** Position of element 0 on the record's axis of that rate. */
   origin: number
   guessHz: number
 }
@@ -21,16 +22,16 @@ interface Single {
   deviationHz: number
 }
 
-function fitEach(sampleRateHz: number, stretches: HarmonicStretch[]): Single[] {
+function fitEach(stretches: HarmonicStretch[]): Single[] {
   return stretches.map((stretch, index) => {
     let fit: SineFit
     try {
-      fit = fitSine4(stretch.samples, sampleRateHz, stretch.guessHz, stretch)
+      fit = fitSine4(stretch.samples, stretch.sampleRateHz, stretch.guessHz, stretch)
     } catch (error) {
       if (!(error instanceof SineFitError)) throw error
-      fit = fitSine3(stretch.samples, sampleRateHz, stretch.guessHz, stretch)
+      fit = fitSine3(stretch.samples, stretch.sampleRateHz, stretch.guessHz, stretch)
     }
-    return { index, fit, deviationHz: Math.max(frequencyDeviationHz(fit, stretch.samples.length, sampleRateHz), 1e-9 * fit.frequencyHz) }
+    return { index, fit, deviationHz: Math.max(frequencyDeviationHz(fit, stretch.samples.length, stretch.sampleRateHz), 1e-9 * fit.frequencyHz) }
   })
 }
 
@@ -62,14 +63,14 @@ function phaseClasses(phases: { time: number, phaseDeg: number }[]): { time: num
  * phase. Used only when the pooled frequency is good enough to count whole cycles between them and the result agrees
  * with it; otherwise (generator restarted between regimes) the pooled one stays.
  */
-function sharpen(sampleRateHz: number, stretches: HarmonicStretch[], group: Single[], pooled: { frequencyHz: number, deviationHz: number }) {
-  const middles = group.map(single => (stretches[single.index].origin + (stretches[single.index].samples.length - 1) / 2) / sampleRateHz)
+function sharpen(stretches: HarmonicStretch[], group: Single[], pooled: { frequencyHz: number, deviationHz: number }) {
+  const middles = group.map(({ index }) => (stretches[index].origin + (stretches[index].samples.length - 1) / 2) / stretches[index].sampleRateHz)
   const centre = middles.reduce((sum, time) => sum + time, 0) / middles.length
   const span = Math.max(...middles) - Math.min(...middles)
   if (pooled.deviationHz * span * 360 > 6) return pooled
   const phases = group.map((single, k) => {
     const stretch = stretches[single.index]
-    const fit = fitSine3(stretch.samples, sampleRateHz, pooled.frequencyHz, stretch)
+    const fit = fitSine3(stretch.samples, stretch.sampleRateHz, pooled.frequencyHz, stretch)
     // Phase at the line's middle, so that the lever from sample 0 is not in it.
     return { time: middles[k] - centre, phaseDeg: wrapDegrees(fit.phaseDeg + 360 * ((pooled.frequencyHz * centre) % 1)) }
   })
@@ -110,8 +111,8 @@ function sharpen(sampleRateHz: number, stretches: HarmonicStretch[], group: Sing
  * @param plannedFrequenciesHz a line that cannot be told from a planned frequency (four standard deviations) takes it
  * @returns lines in order of frequency
  */
-export function findLineFrequencies(sampleRateHz: number, stretches: HarmonicStretch[], plannedFrequenciesHz: number[] = []): LineFrequency[] {
-  const singles = fitEach(sampleRateHz, stretches).sort((a, b) => a.fit.frequencyHz - b.fit.frequencyHz)
+export function findLineFrequencies(stretches: HarmonicStretch[], plannedFrequenciesHz: number[] = []): LineFrequency[] {
+  const singles = fitEach(stretches).sort((a, b) => a.fit.frequencyHz - b.fit.frequencyHz)
   const groups: Single[][] = []
   for (const single of singles) {
     const last = groups.at(-1)?.at(-1)
@@ -120,7 +121,7 @@ export function findLineFrequencies(sampleRateHz: number, stretches: HarmonicStr
     else groups.push([single])
   }
   return groups.map((group) => {
-    const line = sharpen(sampleRateHz, stretches, group, pool(group))
+    const line = sharpen(stretches, group, pool(group))
     const planned = plannedFrequenciesHz.find(frequency => Math.abs(frequency - line.frequencyHz) < 4 * line.deviationHz)
     return { frequencyHz: planned ?? line.frequencyHz, deviationHz: line.deviationHz, members: group.map(single => single.index).sort((a, b) => a - b) }
   })

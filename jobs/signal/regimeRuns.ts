@@ -1,3 +1,4 @@
+import { decimateStretch, type Decimated } from './decimate'
 import { computeCells, type RegimeCells } from './regimeCells'
 import { fitSine3, fitSine4, SineFitError, type SineFit } from './sineFit'
 import { dominantTone } from './spectrum'
@@ -109,9 +110,11 @@ function seedTone(search: Search, cell: number, level: number): SineFit | null {
   return fit.rmsResidual < 0.35 * fit.amplitude / Math.SQRT2 ? fit : null
 }
 
+/** Amplitude and residual are those of the averaged samples, a percent lower at most. */
 function refine(search: Search, guessHz: number, range: { first: number, count: number }): SineFit | null {
+  const { samples, sampleRateHz, origin } = decimateStretch(search.samples, search.sampleRateHz, range, guessHz)
   try {
-    return fitSine4(search.samples, search.sampleRateHz, guessHz, range)
+    return fitSine4(samples, sampleRateHz, guessHz, { origin })
   } catch (error) {
     if (error instanceof SineFitError) return null
     throw error
@@ -136,13 +139,14 @@ function growConstant(search: Search, run: LampRun): void {
 }
 
 function growHarmonic(search: Search, run: LampRun): void {
-  const { cells, sampleRateHz, samples } = search
+  const { cells } = search
   let refineAt = 2 * (run.endCell - run.firstCell)
   while (run.endCell < cells.count) {
     const recent = Math.max(run.firstCell, run.endCell - recentCells)
-    const model = fitSine3(samples, sampleRateHz, run.frequencyHz!, stretch(search, recent, run.endCell - recent))
-    const error = rmsError(search, model, stretch(search, run.endCell, 1))
-    if (error > Math.max(2 * model.rmsResidual, 0.12 * model.amplitude)) return
+    const known = decimateStretch(search.samples, search.sampleRateHz, stretch(search, recent, run.endCell - recent), run.frequencyHz!)
+    const model = fitSine3(known.samples, known.sampleRateHz, run.frequencyHz!, known)
+    const next = decimateStretch(search.samples, search.sampleRateHz, stretch(search, run.endCell, 1), run.frequencyHz!)
+    if (rmsError(model, next) > Math.max(2 * model.rmsResidual, 0.12 * model.amplitude)) return
     run.endCell++
     if (run.endCell - run.firstCell >= refineAt) {
       const better = refine(search, run.frequencyHz!, stretch(search, run.firstCell, run.endCell - run.firstCell))
@@ -152,21 +156,14 @@ function growHarmonic(search: Search, run: LampRun): void {
   }
 }
 
-/** rms of samples minus model over a stretch. */
-function rmsError(search: Search, model: SineFit, range: { first: number, count: number }): number {
-  const step = 2 * Math.PI * model.frequencyHz / search.sampleRateHz
-  const start = step * range.first
-  let cos = Math.cos(start)
-  let sin = Math.sin(start)
-  const cosStep = Math.cos(step)
-  const sinStep = Math.sin(step)
+/** rms of samples minus model. */
+function rmsError(model: SineFit, { samples, sampleRateHz, origin }: Decimated): number {
+  const radiansPerSample = 2 * Math.PI * model.frequencyHz / sampleRateHz
   let squares = 0
-  for (let i = range.first; i < range.first + range.count; i++) {
-    const error = search.samples[i] - model.offset - model.sine * sin - model.cosine * cos
+  for (let i = 0; i < samples.length; i++) {
+    const angle = radiansPerSample * (origin + i)
+    const error = samples[i] - model.offset - model.sine * Math.sin(angle) - model.cosine * Math.cos(angle)
     squares += error * error
-    const next = cos * cosStep - sin * sinStep
-    sin = sin * cosStep + cos * sinStep
-    cos = next
   }
-  return Math.sqrt(squares / range.count)
+  return Math.sqrt(squares / samples.length)
 }

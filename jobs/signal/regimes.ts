@@ -1,4 +1,5 @@
 import type { Flag, Regime } from '../../shared/measurement'
+import { decimateStretch } from './decimate'
 import { findLineFrequencies } from './lineFrequency'
 import { refineBoundaries, type LampStretch } from './regimeBoundaries'
 import { removeTones } from './removeTones'
@@ -104,20 +105,22 @@ function toRegime(samples: Float32Array, sampleRateHz: number, entry: Fitted, co
   }
 }
 
-/** Frequency and phase from the stretch without ripple, level and residual from the stretch as it is. */
+/** Frequency, phase and amplitude from the stretch without ripple, level and residual from the stretch as it is. */
 function fitStretches(samples: Float32Array, sampleRateHz: number, stretches: LampStretch[], planned: number[]): Fitted[] {
   const harmonic = stretches.filter(stretch => stretch.kind === 'harmonic')
   const parts = harmonic.map((stretch) => {
-    const range = { first: stretch.first, count: stretch.end - stretch.first }
-    return { samples: removeTones(samples, sampleRateHz, range, stretch.frequencyHz!), origin: stretch.first, guessHz: stretch.frequencyHz! }
+    const guessHz = stretch.frequencyHz!
+    const part = decimateStretch(samples, sampleRateHz, { first: stretch.first, count: stretch.end - stretch.first }, guessHz)
+    return { ...part, samples: removeTones(part.samples, part.sampleRateHz, guessHz), guessHz }
   })
   const fits = new Map<LampStretch, SineFit>()
-  for (const line of findLineFrequencies(sampleRateHz, parts, planned)) {
+  for (const line of findLineFrequencies(parts, planned)) {
     for (const member of line.members) {
       const stretch = harmonic[member]
-      const clean = fitSine3(parts[member].samples, sampleRateHz, line.frequencyHz, parts[member])
+      const part = parts[member]
+      const clean = fitSine3(part.samples, part.sampleRateHz, line.frequencyHz, part)
       const whole = fitSine3(samples, sampleRateHz, line.frequencyHz, { first: stretch.first, count: stretch.end - stretch.first })
-      fits.set(stretch, { ...clean, rmsResidual: whole.rmsResidual })
+      fits.set(stretch, { ...whole, phaseDeg: clean.phaseDeg, amplitude: clean.amplitude / part.gain })
     }
   }
   return stretches.map((stretch) => {

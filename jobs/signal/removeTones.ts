@@ -29,13 +29,11 @@ function tryFit(samples: Float64Array, sampleRateHz: number, guessHz: number): S
  * A tone counts when it is ten times above what noise would give, and lies two resolution widths from the sine and below
  * half the sample rate.
  *
- * @param stretch first sample and count; the copy's element 0 is sample `first`
  * @param frequencyHz of the sine to keep, good to half a cycle over the stretch
  */
-export function removeTones(samples: ArrayLike<number>, sampleRateHz: number, stretch: { first: number, count: number }, frequencyHz: number): Float64Array {
-  const clean = new Float64Array(stretch.count)
-  for (let i = 0; i < stretch.count; i++) clean[i] = samples[stretch.first + i]
-  const resolutionHz = sampleRateHz / stretch.count
+export function removeTones(samples: Float64Array, sampleRateHz: number, frequencyHz: number): Float64Array {
+  const clean = samples.slice()
+  const resolutionHz = sampleRateHz / samples.length
   for (let tones = 0; tones < mostTones; tones++) {
     const sine = tryFit(clean, sampleRateHz, frequencyHz)
     if (!sine) return clean

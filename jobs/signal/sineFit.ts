@@ -71,15 +71,32 @@ function bounds(samples: ArrayLike<number>, sampleRateHz: number, frequencyHz: n
   return { first, count, origin: stretch.origin ?? 0 }
 }
 
+function squaredError(samples: ArrayLike<number>, first: number, count: number, radiansPerSample: number, model: { a: number, b: number, offset: number }): number {
+  const { a, b, offset } = model
+  const cosStep = Math.cos(radiansPerSample)
+  const sinStep = Math.sin(radiansPerSample)
+  let squares = 0
+  let cos = 1, sin = 0
+  for (let k = 0; k < count; k++) {
+    if (k % resyncEvery === 0) {
+      const angle = radiansPerSample * (k - (count - 1) / 2)
+      cos = Math.cos(angle)
+      sin = Math.sin(angle)
+    }
+    const error = samples[first + k] - offset - a * cos - b * sin
+    squares += error * error
+    const next = cos * cosStep - sin * sinStep
+    sin = sin * cosStep + cos * sinStep
+    cos = next
+  }
+  return squares
+}
+
 /** cosine and sine coefficients about the stretch's middle → a `SineFit` about sample 0. */
 function describe(samples: ArrayLike<number>, sampleRateHz: number, frequencyHz: number, { first, count, origin }: Required<Stretch>, middle: { a: number, b: number, offset: number }): SineFit {
   const { a, b, offset } = middle
   const radiansPerSample = 2 * Math.PI * frequencyHz / sampleRateHz
-  let squares = 0
-  walk(first, count, radiansPerSample, (index, cos, sin) => {
-    const error = samples[index] - offset - a * cos - b * sin
-    squares += error * error
-  })
+  const squares = squaredError(samples, first, count, radiansPerSample, middle)
   const angle = radiansPerSample * (origin + first + (count - 1) / 2)
   const cosine = a * Math.cos(angle) - b * Math.sin(angle)
   const sine = a * Math.sin(angle) + b * Math.cos(angle)
@@ -94,9 +111,17 @@ function describe(samples: ArrayLike<number>, sampleRateHz: number, frequencyHz:
 function solveMiddle(samples: ArrayLike<number>, first: number, count: number, radiansPerSample: number) {
   // Values are taken about the first sample so that a large offset costs no digits.
   const base = samples[first]
+  const cosStep = Math.cos(radiansPerSample)
+  const sinStep = Math.sin(radiansPerSample)
   let c = 0, s = 0, cc = 0, cs = 0, ss = 0, y = 0, yc = 0, ys = 0
-  walk(first, count, radiansPerSample, (index, cos, sin) => {
-    const value = samples[index] - base
+  let cos = 1, sin = 0
+  for (let k = 0; k < count; k++) {
+    if (k % resyncEvery === 0) {
+      const angle = radiansPerSample * (k - (count - 1) / 2)
+      cos = Math.cos(angle)
+      sin = Math.sin(angle)
+    }
+    const value = samples[first + k] - base
     c += cos
     s += sin
     cc += cos * cos
@@ -105,7 +130,10 @@ function solveMiddle(samples: ArrayLike<number>, first: number, count: number, r
     y += value
     yc += value * cos
     ys += value * sin
-  })
+    const next = cos * cosStep - sin * sinStep
+    sin = sin * cosStep + cos * sinStep
+    cos = next
+  }
   const x = solveLinear([cc, cs, c, cs, ss, s, c, s, count], [yc, ys, y])
   if (!x) throw new SineFitError('The stretch is too short for its frequency: sine, cosine and offset cannot be told apart.')
   return { a: x[0], b: x[1], offset: x[2] + base }
