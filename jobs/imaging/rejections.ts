@@ -6,7 +6,7 @@ const leastGood = 2
 /**
  * Which repetitions an automatic run leaves out: those that fail a check that rejects, when at least two good ones remain.
  *
- * @param checks of one line
+ * @param checks of one line, without those of repetitions that a person has rejected already
  * @returns the repetitions to reject, ascending, and a flag for each; when too few good ones would remain nothing is
  * rejected and one flag asks for a person
  */
