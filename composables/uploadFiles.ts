@@ -29,13 +29,15 @@ export function uploadProblem(cause: unknown): { message: string, waits: 'networ
   return { message: ownWords(response?.getBody()) ?? fallback(status), waits: 'person' }
 }
 
+/** The tus routes answer a plain sentence, the rest of the API an error body. */
 function ownWords(body: string | undefined): string | null {
+  const text = body?.trim() ?? ''
   try {
-    const parsed = JSON.parse(body ?? '') as { data?: { message?: unknown }, message?: unknown }
+    const parsed = JSON.parse(text) as { data?: { message?: unknown }, message?: unknown }
     const message = parsed.data?.message ?? parsed.message
     return typeof message === 'string' ? message : null
   } catch {
-    return null
+    return text.length > 0 && text.length < 400 && !text.startsWith('<') ? text : null
   }
 }
 

@@ -49,7 +49,8 @@ describe('what a failed upload waits for', () => {
   it('gives the server\'s words to the person when it will not go on by itself', () => {
     const body = JSON.stringify({ data: { code: 'disk-full', message: 'There is not enough free disk space for this. Free some space or ask the operator.' } })
     expect(uploadProblem(refusal(507, body))).toEqual({ waits: 'person', message: 'There is not enough free disk space for this. Free some space or ask the operator.' })
-    expect(uploadProblem(refusal(410, 'gone')).message).toContain('drop the file again')
+    expect(uploadProblem(refusal(400, 'This acquisition does not exist.\n')).message).toBe('This acquisition does not exist.')
+    expect(uploadProblem(refusal(410, '<html>')).message).toContain('drop the file again')
   })
 })
 
