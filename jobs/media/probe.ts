@@ -55,11 +55,17 @@ function assertMeasurable({ width, height, pixelFormat, codec }: VideoStream): v
 }
 
 /** A header that is off by a frame or two is flagged; a file that ends early is refused, with what it should hold. */
-function assertComplete({ frameCount, containerFrameCount, frameRateHz, container, variableRate }: ClipFacts, { durationSeconds }: VideoStream): void {
-  // MOV's stated length follows its edit list; its frame count is exact. Matroska states a length only.
-  const byLength = !container.split(',').includes('mov') && !variableRate && durationSeconds !== null ? Math.round(durationSeconds * frameRateHz) : 0
-  const expected = containerFrameCount ?? byLength
-  if (expected - frameCount > Math.max(2, 0.01 * expected)) throw new MediaError('clip-incomplete', `The file ends early: ${frameCount} of ${expected} frames are there. Copy the clip again from the card and upload it.`)
+function assertComplete(facts: ClipFacts, video: VideoStream): void {
+  const { frameCount, containerFrameCount } = facts
+  const { missing, allowed } = containerFrameCount === null ? missingByLength(facts, video) : { missing: containerFrameCount - frameCount, allowed: 0 }
+  if (missing > Math.max(2, 0.01 * frameCount, allowed)) throw new MediaError('clip-incomplete', `The file ends early: ${frameCount} of ${frameCount + missing} frames are there. Copy the clip again from the card and upload it.`)
+}
+
+/** Where frames are not counted, the stated length must be reached; gaps within the clip are no matter here. */
+function missingByLength({ frameRateHz, durationSeconds, container, audioTracks }: ClipFacts, video: VideoStream): { missing: number, allowed: number } {
+  // MOV's stated length follows its edit list. The length of the whole file may be that of its sound, which can go on a little.
+  if (video.durationSeconds === null || container.split(',').includes('mov')) return { missing: 0, allowed: 0 }
+  return { missing: Math.round((video.durationSeconds - durationSeconds) * frameRateHz), allowed: audioTracks ? frameRateHz : 0 }
 }
 
 const invert = (rate: { numerator: number, denominator: number } | undefined) => ({ numerator: rate?.denominator ?? 1, denominator: rate?.numerator ?? 25 })

@@ -60,6 +60,12 @@ describe('facts of a clip', () => {
     expect(frameTimesSeconds[7]).toBeCloseTo((7 + 0.4 * Math.sin(7)) / 50, 2)
   })
 
+  it('show frames that were dropped within a clip, and do not take it for cut off', async () => {
+    const { facts, flags } = await probe(clips.make('dropped.mkv', [...h264, '-bf', '0', '-vf', 'select=\'lt(n,60)+gt(n,69)\'', '-fps_mode', 'passthrough'], { seconds: 3 }))
+    expect(facts).toMatchObject({ frameCount: 140, variableRate: false })
+    expect(flags.find(({ code }) => code === 'timestamp-gaps')?.message).toMatch(/^10 frames are missing in 1 gap, the first before frame 60/)
+  })
+
   it('count the frames that an edit list hides', async () => {
     const whole = clips.make('whole.mp4', h264)
     ffmpeg('-ss', '0.3', '-i', whole, '-c', 'copy', clips.path('edited.mp4'))
