@@ -20,14 +20,17 @@ const sentences = new Map<unknown, string>([
 /** Refusals of the protocol whose stock status is not the one a client acts well on. */
 const statuses = new Map<unknown, number>([[ERRORS.UNSUPPORTED_CREATION_DEFER_LENGTH_EXTENSION, 400]])
 
+/** tus clients forget an upload and start afresh when HEAD fails with 5xx; 423 makes them wait and ask again. */
+export const askAgainStatus = 423
+
 /** The answer to a failed tus request: a status that clients act on rightly, and a sentence. */
-export function describeTusError(error: unknown): TusAnswer {
+export function describeTusError(error: unknown, method: string): TusAnswer {
   const sentence = sentences.get(error)
   if (sentence) return { status_code: statuses.get(error) ?? (error as TusAnswer).status_code, body: `${sentence}\n` }
   if (error instanceof LampsumError) return { status_code: error.status, body: `${error.message}\n` }
   const code = databaseErrorCode(error)
   if (code === 'ENOSPC' || code === 'EDQUOT') return fromCode('disk-full', error)
-  if (isDatabaseAway(error)) return fromCode('database-away', error)
+  if (isDatabaseAway(error)) return { ...fromCode('database-away', error), ...(method === 'HEAD' && { status_code: askAgainStatus }) }
   if (isTusAnswer(error)) return error
   console.error('[uploads]', error)
   return fromCode('server-error', error)

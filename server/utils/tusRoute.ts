@@ -6,6 +6,7 @@ import type { User } from '#shared/schemas/people'
 import { storeFolders } from '../store/fileStore'
 import { useDatabase } from './database'
 import { useFileStore } from './files'
+import { askAgainStatus } from './tusErrors'
 import { TusServer } from './tusServer'
 
 const users = new WeakMap<IncomingMessage, User>()
@@ -35,9 +36,9 @@ export function defineTusRoute<K extends Extract<RouteKey, `${string} /api/uploa
   })
 }
 
-/** tus clients forget an upload and start afresh when HEAD fails with 5xx; 423 makes them wait and ask again. */
+/** As describeTusError: no client may take a database that is away for an upload that is gone. */
 function answerLocked(event: H3Event): null {
-  setResponseStatus(event, 423)
+  setResponseStatus(event, askAgainStatus)
   setResponseHeaders(event, { 'tus-resumable': '1.0.0', 'retry-after': 2 })
   return null
 }

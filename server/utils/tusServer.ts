@@ -39,7 +39,7 @@ export class TusServer extends Server {
       namingFunction: () => randomUUID(),
       // No other site has business here: no CORS headers at all.
       allowedOrigins: () => false,
-      onResponseError: (_, error) => describeTusError(error),
+      onResponseError: (request, error) => describeTusError(error, request.method),
       async onIncomingRequest(request, id) {
         if (request.method !== 'POST') await requireOwnUpload(database(), userOf(nodeRequest(request as TusRequest)), id)
       },

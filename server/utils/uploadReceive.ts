@@ -33,31 +33,47 @@ export async function receiveBody(body: Readable, { path, offset, limit, signal,
 class Receiver {
   private waiting: Buffer[] = []
   private waitingBytes = 0
+  /** The write under way, while the next bytes are gathered. */
+  private writing: Promise<void> = Promise.resolve()
+  private arrived: number
 
-  constructor(private readonly file: FileHandle, private length: number, private readonly onWritten?: (length: number) => void) {}
+  constructor(private readonly file: FileHandle, private length: number, private readonly onWritten?: (length: number) => void) {
+    this.arrived = length
+  }
 
   async run(body: Readable, limit: number, signal: AbortSignal): Promise<number> {
-    const end = this.length + limit
+    const end = this.arrived + limit
+    let failure: unknown
     try {
       for await (const chunk of untilAborted(body, signal)) {
-        if (this.length + this.waitingBytes + chunk.length > end) throw ERRORS.ERR_SIZE_EXCEEDED
+        if (this.arrived + chunk.length > end) throw ERRORS.ERR_SIZE_EXCEEDED
+        this.arrived += chunk.length
         this.waiting.push(chunk)
         this.waitingBytes += chunk.length
         if (this.waitingBytes >= writeBytes) await this.flush()
       }
     } catch (error) {
-      if (error !== connectionLost) throw error
-      await this.flush()
-      throw ERRORS.ABORTED
+      failure = error
     }
-    await this.flush()
+    // What came before the connection broke is kept; of a body that is too long nothing more is.
+    if (failure !== ERRORS.ERR_SIZE_EXCEEDED) await this.flush()
+    await this.writing
+    if (failure) throw failure
     return this.length
   }
 
+  /** Starts the next write as soon as the one before is done. */
   private async flush(): Promise<void> {
-    let buffers = this.waiting
+    await this.writing
+    const buffers = this.waiting
     this.waiting = []
     this.waitingBytes = 0
+    this.writing = this.write(buffers)
+    // Whoever waits for it next hears of its failure.
+    this.writing.catch(() => {})
+  }
+
+  private async write(buffers: Buffer[]): Promise<void> {
     while (buffers.length) {
       const { bytesWritten } = await this.file.writev(buffers, this.length)
       this.length += bytesWritten
@@ -75,8 +91,6 @@ function dropBytes(buffers: Buffer[], count: number): Buffer[] {
   return rest
 }
 
-const connectionLost = new Error('The connection broke.')
-
 /** The body's chunks until it ends or the signal asks to stop. The request itself stays alive: it still has to be answered. */
 async function* untilAborted(body: Readable, signal: AbortSignal): AsyncGenerator<Buffer> {
   let wake = () => {}
@@ -91,7 +105,7 @@ async function* untilAborted(body: Readable, signal: AbortSignal): AsyncGenerato
         continue
       }
       if (body.readableEnded) return
-      if (body.errored || body.destroyed) throw connectionLost
+      if (body.errored || body.destroyed) throw ERRORS.ABORTED
       await new Promise<void>((resolve) => {
         wake = resolve
         if (signal.aborted || body.readableEnded || body.destroyed || body.readableLength) resolve()
