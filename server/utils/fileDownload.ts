@@ -1,6 +1,6 @@
 import { pipeline } from 'node:stream/promises'
 import type { Readable } from 'node:stream'
-import type { H3Event } from 'h3'
+import { getRequestHeader, removeResponseHeader, setResponseHeader, setResponseHeaders, setResponseStatus, type H3Event } from 'h3'
 import { LampsumError } from '#shared/errors'
 import { isUnchanged, mayAnswerPart, parseRange } from './httpRange'
 

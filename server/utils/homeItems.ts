@@ -23,7 +23,7 @@ export async function stateItems(database: Database, user: User): Promise<HomeIt
 
 function itemOf(summary: AcquisitionSummary, user: User, own: boolean): HomeItem | null {
   const { id, state, message, createdAt } = summary
-  const name = nameOf(summary)
+  const name = nameOf(summary).replace(/^a/, 'A')
   const page = `/acquisitions/${id}`
   const mayDecide = can(user.role, 'alignment.write')
   if (state === 'failed' && (own || can(user.role, 'job.control'))) return { kind: 'failed', message: `${name} failed: ${message}`, to: page, at: createdAt }
@@ -34,7 +34,7 @@ function itemOf(summary: AcquisitionSummary, user: User, own: boolean): HomeItem
   return null
 }
 
-const nameOf = ({ number, title }: Pick<AcquisitionSummary, 'number' | 'title'>) => `Acquisition ${number}, “${title}”`
+const nameOf = ({ number, title }: Pick<AcquisitionSummary, 'number' | 'title'>) => `acquisition ${number}, “${title}”`
 
 /** Uploads that have stopped; a technician sees their own. */
 export async function uploadItems(database: Database, user: User, now: Date): Promise<HomeItem[]> {
@@ -45,7 +45,7 @@ export async function uploadItems(database: Database, user: User, now: Date): Pr
     const stopped = now.getTime() - upload.lastActivityAt.getTime() > idleMs
     return {
       kind: 'upload', to: `/intake?acquisition=${upload.acquisitionId}`, at: upload.lastActivityAt.toISOString(),
-      message: `${upload.filename} for ${nameOf(acquisition)} is ${share} here${stopped ? '. It has stopped: pick the same file again to go on.' : ' and still arriving.'}`,
+      message: `${upload.filename} for ${nameOf(acquisition)}, is ${share} here${stopped ? '. It has stopped: pick the same file again to go on.' : ' and still arriving.'}`,
     }
   })
 }
@@ -65,7 +65,7 @@ export async function draftItems(database: Database): Promise<HomeItem[]> {
   for (const row of rows) byAcquisition.set(row.acquisitionId, [...byAcquisition.get(row.acquisitionId) ?? [], row])
   return [...byAcquisition.values()].map((sets): HomeItem => ({
     kind: 'ready', at: sets[0]!.createdAt.toISOString(),
-    message: sets.length === 1 ? `A frame set of ${nameOf(sets[0]!)} is ready to look at and release.` : `${sets.length} frame sets of ${nameOf(sets[0]!)} are ready to look at and release.`,
+    message: sets.length === 1 ? `A frame set of ${nameOf(sets[0]!)}, is ready to look at and release.` : `${sets.length} frame sets of ${nameOf(sets[0]!)}, are ready to look at and release.`,
     to: sets.length === 1 ? `/frame-sets/${sets[0]!.id}` : `/acquisitions/${sets[0]!.acquisitionId}`,
   }))
 }
@@ -76,7 +76,7 @@ export async function releaseItems(database: Database, user: User, now: Date): P
   const rows = await database.select({ id: frameSets.id, frequencyHz: frameSets.frequencyHz, releasedAt: frameSets.releasedAt, number: acquisitions.number, title: acquisitions.title }).from(frameSets)
     .innerJoin(acquisitions, eq(acquisitions.id, frameSets.acquisitionId))
     .where(and(eq(frameSets.state, 'released'), gt(frameSets.releasedAt, new Date(now.getTime() - releasesShownMs)), exists(open))).orderBy(desc(frameSets.releasedAt)).limit(200)
-  return rows.map(row => ({ kind: 'release', message: `The line at ${Number(row.frequencyHz.toFixed(2))} Hz of ${nameOf(row)} was released.`, to: `/frame-sets/${row.id}`, at: row.releasedAt!.toISOString() }))
+  return rows.map(row => ({ kind: 'release', message: `The line at ${Number(row.frequencyHz.toFixed(2))} Hz of ${nameOf(row)}, was released.`, to: `/frame-sets/${row.id}`, at: row.releasedAt!.toISOString() }))
 }
 
 export async function processingItems(database: Database): Promise<HomeItem[]> {
