@@ -45,7 +45,7 @@ const readBlocks = async (store: FileStore, key: string, samples: number) => {
 
 /** Raw little-endian float32, in pieces. */
 async function* readFloats(store: FileStore, key: string, first: number, end: number): AsyncGenerator<Float32Array> {
-  let rest = Buffer.alloc(0)
+  let rest: Buffer = Buffer.alloc(0)
   for await (const chunk of store.openRange(key, { start: 4 * first, end: 4 * end - 1 })) {
     const bytes = rest.length ? Buffer.concat([rest, chunk as Buffer]) : chunk as Buffer
     const whole = bytes.length - bytes.length % 4

@@ -24,7 +24,7 @@ function useTusServer(): TusServer {
 export function defineTusRoute<K extends Extract<RouteKey, `${string} /api/uploads${string}`>>(key: K) {
   const route = defineRoute(key, async ({ event, user }) => {
     if (user) users.set(event.node.req, user)
-    await useTusServer().handle(event.node.req, event.node.res)
+    return useTusServer().handle(event.node.req, event.node.res) as never
   })
   return defineEventHandler(async (event) => {
     try {

@@ -24,10 +24,10 @@ export interface TusOptions {
   drainMs?: number
 }
 
-type TusRequest = Parameters<Server['handler']>[0]
+type TusRequest = Parameters<Server['handleWeb']>[0]
 type WriteToStore = (body: unknown, upload: Upload, limit: number, context: CancellationContext) => Promise<number>
 
-const nodeRequest = (request: TusRequest) => request.runtime!.node!.req as IncomingMessage
+const nodeRequest = (request: unknown) => (request as { runtime: { node: { req: IncomingMessage } } }).runtime.node.req
 
 /** tus 1.0.0 for clips and records: the protocol by @tus/server, rows, space and bytes by us. */
 export class TusServer extends Server {
@@ -41,10 +41,10 @@ export class TusServer extends Server {
       allowedOrigins: () => false,
       onResponseError: (request, error) => describeTusError(error, request.method),
       async onIncomingRequest(request, id) {
-        if (request.method !== 'POST') await requireOwnUpload(database(), userOf(nodeRequest(request as TusRequest)), id)
+        if (request.method !== 'POST') await requireOwnUpload(database(), userOf(nodeRequest(request)), id)
       },
       async onUploadCreate(request, upload) {
-        const user = userOf(nodeRequest(request as TusRequest))
+        const user = userOf(nodeRequest(request))
         await inLine(() => admit(database(), user, upload, freeBytes))
         return {}
       },
@@ -53,6 +53,7 @@ export class TusServer extends Server {
         return {}
       },
     })
+    takeNodeBodies(this)
     const write: WriteToStore = async (body, upload, limit, { signal }) => {
       if (signal.aborted) throw ERRORS.ABORTED
       if (upload.offset === upload.size) return upload.offset
@@ -65,11 +66,15 @@ export class TusServer extends Server {
     }
     for (const handler of [this.handlers.PATCH, this.handlers.POST]) (handler as unknown as { writeToStore: WriteToStore }).writeToStore = write
   }
+}
 
-  /** Hands Node's own request on as the body; asking for a web stream would start one. */
-  override handler(request: TusRequest) {
+/** Hands Node's own request on as the body: the stock server would wrap it into a web stream. */
+function takeNodeBodies(server: Server): void {
+  const hooked = server as unknown as { handler: (request: TusRequest) => Promise<Response> }
+  const handler = hooked.handler.bind(server)
+  hooked.handler = (request) => {
     Object.defineProperty(request, 'body', { value: nodeRequest(request) })
-    return super.handler(request)
+    return handler(request)
   }
 }
 
