@@ -65,7 +65,7 @@ export const useUploadsStore = defineStore('uploads', () => {
     const sample = await sampleFile(file).catch(() => null)
     if (sample === null) return stop(item, 'The file can no longer be read. Drop it again.')
     const known = item.uploadId && localStorage.getItem(memory(item.uploadId))
-    if (known && known !== sample) return stop(item, 'This file has the name and size of the unfinished one, but other content. Pick the right file, or remove this upload.')
+    if (known && known !== sample) return refuse(item, 'This file has the name and size of the unfinished one, but other content, so nothing was sent. Pick the right file.')
     if (find(item.key)?.state !== 'sending') return
     transfers.set(item.key, await startTransfer(file, item, {
       located: (uploadId) => {
@@ -124,6 +124,12 @@ export const useUploadsStore = defineStore('uploads', () => {
     if (item.uploadId) localStorage.removeItem(memory(item.uploadId))
     files.delete(item.key)
     transfers.delete(item.key)
+    next()
+  }
+  /** Turned away before a byte was sent; what the server holds stays as it is. */
+  function refuse(item: Sending, message: string) {
+    Object.assign(item, { state: 'refused', uploadId: null, message })
+    files.delete(item.key)
     next()
   }
   function stop(item: Sending, message: string) {
