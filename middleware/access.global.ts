@@ -1,5 +1,7 @@
 /** Pages are closed unless they say `public`; a page that names a permission is closed to other roles. */
 export default defineNuxtRouteMiddleware(async (to) => {
+  // The error page that came from the server stands already.
+  if (import.meta.client && useNuxtApp().isHydrating && useError().value) return
   const session = useSessionStore()
   if (!session.asked) await session.load()
   if (to.meta.public || !to.matched.length) return
