@@ -86,8 +86,13 @@ function underWay(jobs: JobFacts[]): DerivedState | null {
 }
 
 function rest({ stages, startsByItself, frameSetCount }: AcquisitionFacts, cancelled: JobFacts | undefined): DerivedState {
-  if (stages.every(stage => stage.current)) return { state: 'ready', message: frameSetCount === 1 ? 'Its frame set is ready.' : `Its ${frameSetCount} frame sets are ready.` }
+  if (stages.every(stage => stage.current)) return { state: 'ready', message: readyMessage(frameSetCount) }
   if (cancelled) return { state: 'stopped', message: `The ${cancelled.stage} stage was cancelled. Retry it, or process the acquisition again.` }
   if (!startsByItself) return { state: 'stopped', message: 'Clip and record are here. Start the processing when the settings are right.' }
   return { state: 'stopped', message: 'Not everything is up to date. Process it to go on.' }
+}
+
+function readyMessage(frameSetCount: number): string {
+  if (!frameSetCount) return 'Everything has run, but no line gave a frame set. Look at the cut list.'
+  return frameSetCount === 1 ? 'Its frame set is ready.' : `Its ${frameSetCount} frame sets are ready.`
 }

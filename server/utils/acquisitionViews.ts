@@ -4,7 +4,7 @@ import { LampsumError } from '#shared/errors'
 import type { Flag } from '#shared/measurement'
 import type { Acquisition, AlignmentOut, StageStatus } from '#shared/schemas/campaigns'
 import type { CutList } from '#shared/schemas/results'
-import type { FactsOf } from '#shared/stageOutputs'
+import type { FactsOf, SourceFile } from '#shared/stageOutputs'
 import { pipelineStages, type PipelineStage } from '#shared/states'
 import type { Database } from '../db/client'
 import { acquisitions, alignments, cutLists, frameSets, users } from '../db/schema'
@@ -50,13 +50,16 @@ function stageStatus(situation: Situation, stage: PipelineStage): StageStatus {
 
 function clipOf({ outputs, clip }: Situation): Acquisition['clip'] {
   const facts = outputs.inspect?.facts as FactsOf<'inspect'> | undefined
-  return facts && facts.source.uploadId === clip?.id ? { ...facts.clip, source: facts.source } : null
+  return facts && facts.source.uploadId === clip?.id ? { ...facts.clip, source: fileBehind(facts.source) } : null
 }
 
 function recordOf({ outputs, record }: Situation): Acquisition['record'] {
   const facts = outputs.record?.facts as FactsOf<'record'> | undefined
-  return facts && facts.source.uploadId === record?.id ? { ...facts.record, darkLevel: facts.darkLevel, source: facts.source } : null
+  return facts && facts.source.uploadId === record?.id ? { ...facts.record, darkLevel: facts.darkLevel, source: fileBehind(facts.source) } : null
 }
+
+/** Without its key in the store, which is nobody's business. */
+const fileBehind = ({ uploadId, filename, bytes, sha256 }: SourceFile) => ({ uploadId, filename, bytes, sha256 })
 
 async function listSets(database: Database, acquisitionId: string): Promise<Acquisition['frameSets']> {
   const rows = await database.select({ id: frameSets.id, line: frameSets.line, frequencyHz: frameSets.frequencyHz, state: frameSets.state, groups: frameSets.groups })

@@ -10,7 +10,7 @@ import { recentlyUsed } from './recentlyUsed'
 
 /** Up to this many samples are read as they are; above, an overview of the whole channel is made once and kept. */
 const readDirectlySamples = 1 << 20
-const overviews = recentlyUsed<Blocks>(24)
+const overviews = recentlyUsed<Blocks>(12)
 
 interface Asked { from?: number, to?: number, columns: number }
 

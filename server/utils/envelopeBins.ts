@@ -1,5 +1,5 @@
 /** Samples in a block of a channel's overview. */
-export const blockSamples = 512
+export const blockSamples = 128
 
 export interface Blocks {
   minimum: Float32Array

@@ -69,6 +69,7 @@ describe('what an acquisition needs next', () => {
 
   it('is ready when every stage counts', () => {
     expect(deriveAcquisitionState(facts(both, allCurrent, { frameSetCount: 2 }))).toEqual({ state: 'ready', message: 'Its 2 frame sets are ready.' })
+    expect(messageOf(both, allCurrent)).toMatch(/no line gave a frame set/)
   })
 
   it.each(['failed', 'needs review', 'on hold', 'cancelled', 'running', 'waiting'] as const)('says what to do in a sentence for a job that is %s', (state) => {
