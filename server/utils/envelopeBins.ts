@@ -57,14 +57,19 @@ export function envelopeFromBlocks({ minimum, maximum }: Blocks, first: number, 
   for (let bin = 0; bin < bins; bin++) {
     const from = blockAt(first + edgeOf(bin, end - first, bins))
     const to = bin === bins - 1 && end > (minimum.length - 1) * blockSamples ? minimum.length : blockAt(first + edgeOf(bin + 1, end - first, bins))
-    builders.minimum[bin] = reduceBlocks(minimum, from, to, Math.min)
-    builders.maximum[bin] = reduceBlocks(maximum, from, to, Math.max)
+    reduceBlocks({ minimum, maximum }, from, to, builders, bin)
   }
   return builders
 }
 
-function reduceBlocks(values: Float32Array, from: number, to: number, choose: (a: number, b: number) => number): number {
-  let result = Number.NaN
-  for (let i = from; i < to; i++) result = Number.isNaN(result) ? values[i]! : Number.isNaN(values[i]) ? result : choose(result, values[i]!)
-  return result
+/** Overviews are long: plain loops, no calls per block. */
+function reduceBlocks({ minimum, maximum }: Blocks, from: number, to: number, into: Blocks, bin: number): void {
+  let low = Infinity
+  let high = -Infinity
+  for (let i = from; i < to; i++) {
+    if (minimum[i]! < low) low = minimum[i]!
+    if (maximum[i]! > high) high = maximum[i]!
+  }
+  into.minimum[bin] = low <= high ? low : Number.NaN
+  into.maximum[bin] = low <= high ? high : Number.NaN
 }
