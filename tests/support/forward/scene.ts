@@ -22,7 +22,7 @@ export type SceneSpec
     | { kind: 'disc' } & Paint
 
 const meanReflectance = 0.5
-const clothReflectance = 0.06
+const clothReflectance = 0.035
 
 /** Reflectance s(x) of the scene, an exact formula at any point. */
 export function makeScene(spec: SceneSpec, width: number, height: number): Picture {
@@ -64,7 +64,7 @@ const ring = (distance: number, width: number) => Math.exp(-((distance / width) 
 function withHoles(outline: Picture, holes: { x: number, y: number, radius: number }[], shade: Picture): Shape {
   return {
     inside: (x, y) => holes.reduce((least, hole) => Math.min(least, Math.hypot(x - hole.x, y - hole.y) - hole.radius), outline(x, y)),
-    shade: (x, y) => holes.reduce((factor, hole) => factor * (1 - 0.3 * ring(Math.hypot(x - hole.x, y - hole.y) - hole.radius - 3, 2.5)), shade(x, y)),
+    shade: (x, y) => holes.reduce((factor, hole) => factor * (1 - 0.45 * ring(Math.hypot(x - hole.x, y - hole.y) - hole.radius - 3, 2.5)), shade(x, y)),
   }
 }
 
@@ -77,7 +77,7 @@ function panelShape(width: number, height: number): Shape {
     const dy = Math.abs(y - height / 2) - halfHeight + corner
     return corner - Math.hypot(Math.max(dx, 0), Math.max(dy, 0)) - Math.min(Math.max(dx, dy), 0)
   }
-  const bolts = [-1, 1].flatMap(sx => [-1, 1].map(sy => ({ x: width / 2 + sx * 0.38 * width, y: height / 2 + sy * 0.33 * height, radius: 0.025 * height })))
+  const bolts = [-1, 1].flatMap(sx => [-1, 1].map(sy => ({ x: width / 2 + sx * 0.38 * width, y: height / 2 + sy * 0.33 * height, radius: 0.035 * height })))
   const holes = [{ x: 0.33 * width, y: 0.45 * height, radius: 0.13 * height }, { x: 0.66 * width, y: 0.56 * height, radius: 0.09 * height }, ...bolts]
   return withHoles(outline, holes, (x, y) => 1 - 0.25 * ring(x - 0.5 * width, 2.5) - 0.25 * ring(y - 0.78 * height, 2.5) * Number(Math.abs(x - width / 2) < halfWidth))
 }
@@ -87,7 +87,7 @@ function discShape(width: number, height: number): Shape {
   const distance: Picture = (x, y) => Math.hypot(x - centre.x, y - centre.y)
   const holes = Array.from({ length: 8 }, (_, i) => {
     const angle = (i + 0.5) * Math.PI / 4
-    return { x: centre.x + 0.34 * height * Math.cos(angle), y: centre.y + 0.34 * height * Math.sin(angle), radius: 0.03 * height }
+    return { x: centre.x + 0.34 * height * Math.cos(angle), y: centre.y + 0.34 * height * Math.sin(angle), radius: 0.035 * height }
   })
   return withHoles((x, y) => 0.45 * height - distance(x, y), [{ ...centre, radius: 0.12 * height }, ...holes], (x, y) => 1 - 0.25 * ring(distance(x, y) - 0.24 * height, 2.5))
 }
