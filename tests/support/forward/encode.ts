@@ -23,7 +23,7 @@ function encoderArguments(scenario: Scenario, clipPath: string, audioPath: strin
     '-hide_banner', '-loglevel', 'error', '-y', '-fflags', '+bitexact',
     '-f', 'rawvideo', '-pix_fmt', pixelFormat, '-color_range', range, '-s', `${width}x${height}`, '-framerate', `${camera.frameRate.numerator}/${camera.frameRate.denominator}`, '-i', 'pipe:0',
     ...(audioPath ? ['-i', audioPath, '-map', '0:v', '-map', '1:a', '-c:a', encoding.audio!.codec, ...(encoding.audio!.codec === 'aac' ? ['-b:a', '192k'] : [])] : []),
-    '-c:v', 'libx264', '-preset', encoding.preset, '-threads', '1', ...quality, '-g', String(encoding.keyframeInterval), '-bf', String(encoding.bFrames),
+    '-c:v', 'libx264', '-preset', encoding.preset, ...(encoding.tune ? ['-tune', encoding.tune] : []), '-threads', '1', ...quality, '-g', String(encoding.keyframeInterval), '-bf', String(encoding.bFrames),
     '-pix_fmt', pixelFormat, ...colourOptions(scenario), '-flags', '+bitexact', clipPath,
   ]
 }
