@@ -99,7 +99,7 @@ export interface Scenario {
     /** Photodiode on the microphone input: `volts` is full scale. */
     audio: null | { codec: 'aac' | 'flac' | 'pcm_s16le', sampleRateHz: number, fullScaleVolts: number }
   }
-  /** Harmonics of the line that the rendering keeps; 3 is exact to 10⁻⁴ of the contrast at 0.3 px. */
+  /** Harmonics of the line that the rendering keeps; 3 is good to 10⁻⁴ of white at 0.35 px, 6 to 2·10⁻⁵ or better. */
   harmonics: number
 }
 
