@@ -1,3 +1,5 @@
+import { fileURLToPath } from 'node:url'
+
 // https://nuxt.com/docs/api/configuration/nuxt-config
 export default defineNuxtConfig({
   modules: ['@nuxt/eslint', '@nuxtjs/tailwindcss', '@pinia/nuxt', 'nuxt-auth-utils'],
@@ -33,16 +35,18 @@ export default defineNuxtConfig({
   compatibilityDate: '2026-11-01',
   nitro: {
     output: { dir: process.env.LAMPSUM_OUTPUT_DIR || '.output' },
-    esbuild: { options: { target: 'node20' } },
-    errorHandler: '~/server/error',
-    // The pipeline is bundled on its own and never becomes part of the web server.
-    watchOptions: { ignored: ['**/.data/**'] },
   },
   typescript: {
     strict: true,
     tsConfig: { exclude: ['../jobs', '../scripts', '../tests', '../.output*', '../.data*', '../.nuxt-*'] },
   },
   telemetry: false,
+  hooks: {
+    // Ours first, for the API; pages keep Nuxt's own.
+    'nitro:config': (config: { errorHandler?: string | string[] }) => {
+      config.errorHandler = [fileURLToPath(new URL('./server/error', import.meta.url)), ...[config.errorHandler ?? []].flat()]
+    },
+  },
   // Pages ask /api/auth/me; the module's own session route is not part of the API and stays shut.
   auth: { loadStrategy: 'none' },
   eslint: { config: { stylistic: { indent: 2, semi: false, quotes: 'single', braceStyle: '1tbs' } } },

@@ -38,7 +38,7 @@ export function failureOf(error: unknown): Failure {
   const { name, code, message, options, stack } = error as Error & { code?: string, options?: { review?: boolean } }
   const detail = stack ?? String(error)
   if (code && diskCodes.has(code)) return { code: 'disk-full', message: 'The disk is full. This goes on by itself when there is space again.', review: false, detail }
-  if (['StageError', 'MediaError', 'RecordError', 'SolveError', 'SignalError'].includes(name) && code) return { code, message, review: options?.review ?? false, detail }
+  if (['StageError', 'MediaError', 'RecordError', 'SolveError', 'AlignError'].includes(name) && code) return { code, message, review: options?.review ?? false, detail }
   if (name === 'LampsumError' && code) return { code, message, review: false, detail }
   return { code: 'unexpected', message: `Something unexpected stopped this: ${message}. Retry it once; if it stays, tell the people who keep Lampsum and show them the log.`, review: false, detail }
 }

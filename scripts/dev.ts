@@ -9,7 +9,13 @@ import { projectRoot, readSettings } from './lib/settings'
 run(async () => {
   const settings = readSettings()
   const foundation = await startFoundation(settings)
-  await bundleRunner(join(projectRoot, '.output-dev', String(settings.port)))
+  try {
+    await bundleRunner(join(projectRoot, '.output-dev', String(settings.port)))
+  } catch (error) {
+    await foundation.mariaDb.stop()
+    foundation.release()
+    throw error
+  }
   const runner = supervise('runner', join(projectRoot, '.output-dev', String(settings.port), 'runner.mjs'), runnerEnvironment(settings, foundation), join(settings.dataDir, 'logs', 'runner.log'))
   console.log(`Demo password: ${foundation.secrets.demoPassword} (technician@, analyst@, operator@, admin@, guest@demo.lampsum.example)`)
   const web = spawn(process.execPath, [join(projectRoot, 'node_modules', 'nuxt', 'bin', 'nuxt.mjs'), 'dev', '--port', String(settings.port), '--host', settings.host], {

@@ -22,7 +22,7 @@ export interface StageFacts {
   /** files: `predicted` (NPY float64, predicted light of each frame in the unit of `meter.light`; NaN outside the record). */
   align: { version: number, offsetSeconds: number, driftPpm: number, evidence: AlignmentEvidence | null }
   cut: { version: number, alignmentVersion: number, lines: { line: number, frequencyHz: number, groups: number }[] }
-  /** files: `sums-<line>` (NPZ: sums uint32 [G,H,W]). */
+  /** files: `sum-<group id>`, raw little-endian uint32 [H,W]. */
   sum: { cutListVersion: number, frameCount: number }
   check: { frameSetIds: string[] }
 }

@@ -1,0 +1,36 @@
+import { version } from '../../package.json'
+import type { ClipFacts } from '../../shared/measurement'
+import type { ChannelMapping } from '../../shared/records'
+import { stageVersions, type Situation } from '../queue/inputs'
+import { exposureOf, factsOf } from './inputs'
+
+/** Everything besides the files themselves that decides a frame set. No times and no ids of jobs: a second run gives the same bytes. */
+export interface Provenance {
+  program: { version: string, stages: Record<string, number> }
+  inputs: { kind: 'clip' | 'record', filename: string, bytes: number, sha256: string }[]
+  settings: { transfer: string, range: string, frameExposureSeconds: number, guardSeconds: number, millimetresPerPixel: number | null, plan: unknown, channels: ChannelMapping | null }
+  clip: ClipFacts
+  record: { sampleRateHz: number, darkLevel: number | null }
+  alignment: { version: number, offsetSeconds: number, driftPpm: number }
+  cutListVersion: number
+}
+
+export function provenanceOf(situation: Situation, cutListVersion: number): Provenance {
+  const { acquisition } = situation
+  const inspect = factsOf(situation, 'inspect')
+  const record = factsOf(situation, 'record')
+  const { version: alignmentVersion, offsetSeconds, driftPpm } = factsOf(situation, 'align')
+  const input = (kind: 'clip' | 'record', { filename, bytes, sha256 }: typeof inspect.source) => ({ kind, filename, bytes, sha256 })
+  return {
+    program: { version, stages: stageVersions },
+    inputs: [input('clip', inspect.source), input('record', record.source)],
+    settings: {
+      transfer: acquisition.transfer, range: acquisition.range, frameExposureSeconds: exposureOf(situation), guardSeconds: acquisition.guardSeconds,
+      millimetresPerPixel: acquisition.millimetresPerPixel, plan: acquisition.plan, channels: acquisition.channels,
+    },
+    clip: inspect.clip,
+    record: { sampleRateHz: record.record.sampleRateHz, darkLevel: record.darkLevel },
+    alignment: { version: alignmentVersion, offsetSeconds, driftPpm },
+    cutListVersion,
+  }
+}

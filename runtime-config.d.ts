@@ -1,0 +1,14 @@
+declare module 'nuxt/schema' {
+  interface RuntimeConfig {
+    databaseUrl: string
+    dataDir: string
+    demo: boolean
+    demoPassword: string
+    publicUrl: string
+    smtpUrl: string
+    adminEmail: string
+    adminPassword: string
+  }
+}
+
+export {}
