@@ -43,7 +43,8 @@ export default defineNuxtConfig({
   telemetry: false,
   hooks: {
     // Ours first, for the API; pages keep Nuxt's own.
-    'nitro:config': (config: { errorHandler?: string | string[] }) => {
+    'nitro:config': (nitroConfig) => {
+      const config = nitroConfig as { errorHandler?: string | string[] }
       config.errorHandler = [fileURLToPath(new URL('./server/error', import.meta.url)), ...[config.errorHandler ?? []].flat()]
     },
   },
