@@ -9,6 +9,7 @@ import { useFileStore } from './files'
 import { askAgainStatus } from './tusErrors'
 import { TusServer } from './tusServer'
 
+const protocolVersion = '1.0.0'
 const users = new WeakMap<IncomingMessage, User>()
 let server: TusServer | undefined
 
@@ -24,6 +25,7 @@ function useTusServer(): TusServer {
 export function defineTusRoute<K extends Extract<RouteKey, `${string} /api/uploads${string}`>>(key: K) {
   const route = defineRoute(key, async ({ event, user }) => {
     if (user) users.set(event.node.req, user)
+    if (event.method !== 'OPTIONS' && getRequestHeader(event, 'tus-resumable') !== protocolVersion) return refuseVersion(event) as never
     return useTusServer().handle(event.node.req, event.node.res) as never
   })
   return defineEventHandler(async (event) => {
@@ -34,6 +36,13 @@ export function defineTusRoute<K extends Extract<RouteKey, `${string} /api/uploa
       throw error
     }
   })
+}
+
+/** "If the version specified by the Client is not supported by the Server, it MUST respond with the 412 Precondition Failed status and MUST include the Tus-Version header" (tus 1.0.0, Tus-Resumable). */
+function refuseVersion(event: H3Event): string {
+  setResponseStatus(event, 412)
+  setResponseHeaders(event, { 'tus-version': protocolVersion, 'content-type': 'text/plain' })
+  return `This server speaks tus ${protocolVersion}. Send the header “Tus-Resumable: ${protocolVersion}”.`
 }
 
 /** As describeTusError: no client may take a database that is away for an upload that is gone. */

@@ -209,6 +209,8 @@ describe('tus 1.0.0, sent raw', () => {
   })
 
   it('refuses another protocol version with 412', async () => {
-    expect((await technician.fetch('/api/uploads', { method: 'POST', headers: { ...creation(), 'tus-resumable': '0.2.2' } })).status).toBe(412)
+    const answer = await technician.fetch('/api/uploads', { method: 'POST', headers: { ...creation(), 'tus-resumable': '0.2.2' } })
+    expect(answer.status).toBe(412)
+    expect(answer.headers.get('tus-version')).toBe('1.0.0')
   })
 })
