@@ -2,7 +2,7 @@ import { readFile, writeFile } from 'node:fs/promises'
 import { join } from 'node:path'
 import { and, desc, eq } from 'drizzle-orm'
 import { alignments } from '../../server/db/schema'
-import { alignmentReviewBelow, type AlignmentEvidence } from '../../shared/measurement'
+import { alignmentReviewBelow, type AlignmentEvidence, type Flag } from '../../shared/measurement'
 import { writeNpy } from '../formats/npy'
 import { readNpz } from '../formats/npz'
 import { alignClip, judgeAlignment } from '../signal/align'
@@ -56,7 +56,7 @@ export const align = defineStage<Payload, Result>({
       message: `${manual ? 'Set by hand: o' : sure ? 'O' : 'Not sure: o'}ffset ${offsetSeconds.toFixed(4)} s, drift ${driftPpm.toFixed(1)} ppm, residual ${(100 * residual).toFixed(2)} %. ${evidence.reasons[0] ?? ''}${sure ? '' : ' Accept or correct it on the acquisition.'}`,
       facts: { version: manual?.version ?? 0, offsetSeconds, driftPpm, evidence },
       files: { predicted: file },
-      flags: [],
+      flags: outsideFlags(predicted),
       alignment: { offsetSeconds, driftPpm, residual, confidence, evidence },
     }
   },
@@ -74,3 +74,14 @@ export const align = defineStage<Payload, Result>({
     result.facts.version = version
   },
 })
+
+/** Frames exposed before the record began or after it ended belong to no group; a person should know how many. */
+function outsideFlags(predicted: Float64Array): Flag[] {
+  const outside = predicted.reduce((count, value) => count + Number(Number.isNaN(value)), 0)
+  if (!outside) return []
+  const share = outside / predicted.length
+  return [{
+    code: 'record-does-not-cover-clip', severity: share > 0.02 ? 'warning' : 'note', stage: 'align',
+    message: `The record does not cover ${outside} of ${predicted.length} frames; they are left out. If lines are missing, upload the whole record.`,
+  }]
+}

@@ -1,7 +1,7 @@
 import { writeFile } from 'node:fs/promises'
 import { join } from 'node:path'
 import type { ClipFacts, Group } from '../../shared/measurement'
-import { addFrame } from '../imaging/accumulate'
+import { addFrame, assertSummable } from '../imaging/accumulate'
 import { createLightTable } from '../media/transfer'
 import { cutListOf } from './cutList'
 import { decodeClip } from './decode'
@@ -32,6 +32,7 @@ export const sum = defineStage<Payload>({
     const table = createLightTable(clip.transfer, clip.range, clip.bitDepth)
     const pixels = clip.width * clip.height
     const files: Record<string, string> = {}
+    for (const group of groups) assertSummable(group.frameCount)
     const open = new Map<Group, Uint32Array>()
     const pending = groups.filter(group => group.frameCount > 0).sort((a, b) => a.firstFrame - b.firstFrame)
     const frameCount = await decodeClip(path, clip, helpers, async (luma, index) => {

@@ -49,19 +49,26 @@ export async function storeVerified(payload: VerifyPayload, incoming: string, st
 export async function publishVerified(transaction: Transaction, payload: VerifyPayload, sha256: string): Promise<void> {
   const now = new Date()
   await transaction.update(uploads).set({ state: 'stored', sha256, fileKey: uploadKey(payload.uploadId), receivedBytes: payload.bytes, storedAt: now, message: null }).where(eq(uploads.id, payload.uploadId))
+  const acquisitionId = await announceUpload(transaction, payload.uploadId)
+  await advanceWithin(transaction, acquisitionId)
+}
+
+/** The upload is refused for good when it cannot be proven. */
+export async function publishRefused(transaction: Transaction, uploadId: string, message: string): Promise<void> {
+  await transaction.update(uploads).set({ state: 'refused', message }).where(eq(uploads.id, uploadId))
+  await announceUpload(transaction, uploadId)
+}
+
+/** Answers the upload's acquisition. */
+async function announceUpload(transaction: Transaction, uploadId: string): Promise<string> {
   const [row] = await transaction.select({ upload: uploads, title: acquisitions.title, campaignId: acquisitions.campaignId, userName: users.name })
-    .from(uploads).innerJoin(acquisitions, eq(acquisitions.id, uploads.acquisitionId)).innerJoin(users, eq(users.id, uploads.userId)).where(eq(uploads.id, payload.uploadId))
+    .from(uploads).innerJoin(acquisitions, eq(acquisitions.id, uploads.acquisitionId)).innerJoin(users, eq(users.id, uploads.userId)).where(eq(uploads.id, uploadId))
   const { upload, title, campaignId, userName } = row!
-  await advanceWithin(transaction, upload.acquisitionId)
   await publishEvents(transaction, [{
     type: 'upload', campaignId, payload: {
       id: upload.id, acquisitionId: upload.acquisitionId, acquisitionTitle: title, kind: upload.kind, part: upload.part, filename: upload.filename, bytes: upload.bytes, receivedBytes: upload.receivedBytes,
       state: upload.state, sha256: upload.sha256, message: upload.message, createdAt: upload.createdAt.toISOString(), lastActivityAt: upload.lastActivityAt.toISOString(), userId: upload.userId, userName,
     },
   }])
-}
-
-/** The upload is refused for good when it cannot be proven. */
-export async function publishRefused(transaction: Transaction, uploadId: string, message: string): Promise<void> {
-  await transaction.update(uploads).set({ state: 'refused', message }).where(eq(uploads.id, uploadId))
+  return upload.acquisitionId
 }

@@ -1,6 +1,6 @@
 import { execFileSync } from 'node:child_process'
 import { createHash } from 'node:crypto'
-import { mkdtempSync, rmSync, writeFileSync } from 'node:fs'
+import { mkdtempSync, readFileSync, rmSync, writeFileSync } from 'node:fs'
 import { tmpdir } from 'node:os'
 import { join } from 'node:path'
 import { afterAll, beforeAll, describe, expect, it } from 'vitest'
@@ -166,6 +166,26 @@ describe('bad input', () => {
     const rows = Array.from({ length: 2000 }, (_, i) => `${(i / 1000).toFixed(4)},${Math.sin(i)}`).join('\n')
     const job = await badRecord('unnamed.csv', `time,alpha\n${rows}\n`)
     expect(job).toMatchObject({ state: 'needs review', errorCode: 'no-illumination' })
+  })
+
+  it('takes a record that ends before the clip, leaves the rest out, and says so', async () => {
+    const lines = readFileSync(join(folder, 'scene.csv'), 'utf8').split('\n')
+    const path = join(folder, 'short.csv')
+    writeFileSync(path, `${lines.slice(0, Math.floor(0.55 * lines.length)).join('\n')}\n`)
+    const id = await register('short record')
+    await eventsUntil(analyst, event => endOf(id, 'check')(event) || (['align', 'cut'].some(stage => endOf(id, stage)(event)) && event.data.state !== 'done'), {
+      onOpen: async () => {
+        await uploadFile(application.url, { cookie: technician.cookie }, join(folder, 'scene.mp4'), { acquisitionId: id, kind: 'clip' })
+        await uploadFile(application.url, { cookie: technician.cookie }, path, { acquisitionId: id, kind: 'record' })
+      },
+    })
+    const acquisition = await analyst.call<Acquisition>('GET', `/api/acquisitions/${id}`)
+    expect(acquisition.flags.map(flag => flag.code)).toContain('record-does-not-cover-clip')
+    const { groups } = await analyst.call<CutList>('GET', `/api/acquisitions/${id}/cut-list`)
+    const truths = groupTruths(scenario)
+    for (const group of groups.filter((each: Group) => each.role !== 'dark')) {
+      expect(truths.some(truth => truth.role === group.role && group.firstFrame >= truth.allowed.firstFrame.min && group.firstFrame + group.frameCount - 1 <= truth.allowed.lastFrame.max), group.id).toBe(true)
+    }
   })
 
   it('finds nothing under a foreign campaign\'s id and refuses a wrong role', async () => {
