@@ -1,5 +1,5 @@
 import { randomBytes } from 'node:crypto'
-import { existsSync, mkdirSync, readFileSync, renameSync, writeFileSync } from 'node:fs'
+import { existsSync, mkdirSync, readFileSync, renameSync, statfsSync, writeFileSync } from 'node:fs'
 import { dirname, join, resolve } from 'node:path'
 import { fileURLToPath } from 'node:url'
 
@@ -63,14 +63,25 @@ export function prepareDataDir(dataDir: string): void {
   try {
     for (const folder of ['', 'store', 'incoming', 'work', 'mail', 'logs', 'run']) mkdirSync(join(dataDir, folder), { recursive: true, mode: 0o700 })
     writeFileSync(join(dataDir, 'run', 'writable'), 'Lampsum can write here.\n')
+    requireSpace(dataDir)
   } catch (error) {
     throw dataDirError(dataDir, error)
   }
 }
 
+/** MariaDB's own files take about 100 MB; with less its first start fails half-way. */
+const leastFreeBytes = 200 * 2 ** 20
+
+function requireSpace(dataDir: string): void {
+  const { bavail, bsize } = statfsSync(dataDir)
+  if (bavail * bsize < leastFreeBytes) throw diskFull(dataDir)
+}
+
+const diskFull = (dataDir: string) => new StartError(`The disk that holds ${dataDir} is full. Free some space, or set LAMPSUM_DATA_DIR to a folder on another disk.`)
+
 export function dataDirError(dataDir: string, error: unknown): Error {
   const code = (error as NodeJS.ErrnoException).code
-  if (code === 'ENOSPC' || code === 'EDQUOT') return new StartError(`The disk that holds ${dataDir} is full. Free some space, or set LAMPSUM_DATA_DIR to a folder on another disk.`)
+  if (code === 'ENOSPC' || code === 'EDQUOT') return diskFull(dataDir)
   if (code === 'EACCES' || code === 'EPERM' || code === 'EROFS') return new StartError(`${dataDir} cannot be written. Give this user the right to write there, or set LAMPSUM_DATA_DIR to another folder.`)
   if (code === 'ENOTDIR' || code === 'EEXIST') return new StartError(`${dataDir} is not a folder. Set LAMPSUM_DATA_DIR to a folder of Lampsum's own.`)
   return error as Error

@@ -40,7 +40,7 @@ describe('the route table and the files of server/api', () => {
   })
 
   it('is what each file names in defineRoute, so that no file runs under another entry’s permission', () => {
-    const wrong = files.filter(({ key, source }) => !key.startsWith('ANY ') && /defineRoute\(\s*'([^']+)'/.exec(source)?.[1] !== key)
+    const wrong = files.filter(({ key, source }) => !key.startsWith('ANY ') && /define(?:Tus)?Route\(\s*'([^']+)'/.exec(source)?.[1] !== key)
     expect(wrong.map(({ file }) => file)).toEqual([])
   })
 })
