@@ -4,7 +4,7 @@ import withNuxt from './.nuxt/eslint.config.mjs'
 const impure = ['nuxt*', '#*', 'h3', 'drizzle-orm*', 'mysql2*', 'node:*', 'fs', 'path', 'fluent-ffmpeg', 'sharp', '**/server/**']
 
 export default withNuxt(
-  { ignores: ['.output*/**', '.data*/**', '.nuxt*/**', 'server/db/migrations/**'] },
+  { ignores: ['.output*/**', '.data*/**', '.nuxt*/**', 'server/db/migrations/**', 'jobs/kernels/assembly/**', 'jobs/kernels/*.wasm.ts'] },
   {
     rules: {
       'vue/multi-word-component-names': 'off',
