@@ -28,14 +28,19 @@ export interface ProcessOptions {
   signal?: AbortSignal
   /** The process is ended after this long. */
   timeoutSeconds?: number
-  /** Takes standard output; the process is ended when it throws. Without it, output is dropped. */
-  onOutput?: (stdout: Readable) => Promise<void>
+  /** Takes standard output; the process is ended when it throws or calls `stop`. Without it, output is dropped. */
+  onOutput?: (stdout: Readable, stop: () => void) => Promise<void>
   /** Takes file descriptor 3, for `-progress pipe:3`. */
   onSide?: (text: string) => void
+  onSideEnd?: () => void
+  /** Called with each line on standard error as it comes. */
+  onErrorLine?: () => void
 }
 
 export interface ProcessResult {
   exitCode: number | null
+  /** `onOutput` had enough. */
+  stopped: boolean
   stderrTail: string
   /** Lines on standard error, the first 50. With `-v error` each is an error. */
   errorLines: string[]
@@ -47,12 +52,17 @@ export interface ProcessResult {
  * @throws the signal's reason when aborted, what `onOutput` threw, or MediaError `ffmpeg-missing` or `ffmpeg-timeout`;
  * a non-zero exit is not an error here, because only the caller can say what it means
  */
-export async function runProcess(program: 'ffmpeg' | 'ffprobe', args: string[], { signal, timeoutSeconds, onOutput, onSide }: ProcessOptions = {}): Promise<ProcessResult> {
+export async function runProcess(program: 'ffmpeg' | 'ffprobe', args: string[], { signal, timeoutSeconds, onOutput, onSide, onSideEnd, onErrorLine }: ProcessOptions = {}): Promise<ProcessResult> {
   signal?.throwIfAborted()
   const child = spawn(program, args, { stdio: ['ignore', onOutput ? 'pipe' : 'ignore', 'pipe', onSide ? 'pipe' : 'ignore'], windowsHide: true })
   const exited = exitOf(child, program)
   const kill = () => child.kill('SIGKILL')
   let timedOut = false
+  let stopped = false
+  const stop = () => {
+    stopped = true
+    kill()
+  }
   const timer = timeoutSeconds === undefined
     ? undefined
     : setTimeout(() => {
@@ -60,14 +70,14 @@ export async function runProcess(program: 'ffmpeg' | 'ffprobe', args: string[], 
         kill()
       }, timeoutSeconds * 1000)
   signal?.addEventListener('abort', kill, { once: true })
-  const stderr = collectStderr(child.stderr!)
-  if (onSide) (child.stdio[3] as Readable).setEncoding('utf8').on('data', onSide)
+  const stderr = collectStderr(child.stderr!, onErrorLine)
+  if (onSide) (child.stdio[3] as Readable).setEncoding('utf8').on('data', onSide).on('close', () => onSideEnd?.())
   try {
     // The exit is watched from the start, so that a missing program is not an unhandled rejection while output is read.
-    const [exitCode] = await Promise.all([exited, onOutput?.(child.stdout!)])
+    const [exitCode] = await Promise.all([exited, onOutput?.(child.stdout!, stop)])
     signal?.throwIfAborted()
     if (timedOut) throw new MediaError('ffmpeg-timeout', `${program} did not finish within ${timeoutSeconds} s. The file may be damaged: export it again from the camera.`, { stderrTail: stderr.tail() })
-    return { exitCode, stderrTail: stderr.tail(), errorLines: stderr.lines }
+    return { exitCode, stopped, stderrTail: stderr.tail(), errorLines: stderr.lines }
   } catch (error) {
     signal?.throwIfAborted()
     throw error
@@ -87,7 +97,7 @@ function exitOf(child: ChildProcess, program: string): Promise<number | null> {
   })
 }
 
-function collectStderr(stream: Readable): { lines: string[], tail: () => string } {
+function collectStderr(stream: Readable, onErrorLine?: () => void): { lines: string[], tail: () => string } {
   const lines: string[] = []
   let tail = ''
   let partial = ''
@@ -100,7 +110,9 @@ function collectStderr(stream: Readable): { lines: string[], tail: () => string 
   })
   stream.on('end', () => keep(partial))
   function keep(line: string) {
-    if (line.trim() && lines.length < maximumErrorLines) lines.push(line.trim())
+    if (!line.trim()) return
+    if (lines.length < maximumErrorLines) lines.push(line.trim())
+    onErrorLine?.()
   }
   return { lines, tail: () => tail }
 }

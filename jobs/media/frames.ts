@@ -1,10 +1,8 @@
-import type { Readable } from 'node:stream'
-import type { ClipFacts } from '../../shared/measurement'
 import { editListOptions, inputFile, inputLimits, runProcess } from './ffmpegProcess'
+import { assembleLuma, frameBytesOf, ownTarget, type FrameTarget, type OnFrame, type ReadableClip } from './lumaStream'
 import { MediaError } from './mediaError'
 
-/** What the reader must know of a clip. */
-export type ReadableClip = Pick<ClipFacts, 'container' | 'width' | 'height' | 'bitDepth'>
+export type { FrameTarget, OnFrame, ReadableClip } from './lumaStream'
 
 export interface ReadFramesOptions {
   signal?: AbortSignal
@@ -14,6 +12,8 @@ export interface ReadFramesOptions {
   frameCount?: number
   /** Decoder threads; as many as ffmpeg likes when left out. */
   threads?: number
+  /** Where each frame is read to, asked once a frame: saves a copy when that is a kernel's own memory. */
+  target?: FrameTarget
 }
 
 export interface ReadFramesResult {
@@ -24,9 +24,6 @@ export interface ReadFramesResult {
   errorLines: string[]
 }
 
-/** Luma codes of one frame, row-major. The memory is reused: copy what must outlive the call. */
-export type OnFrame = (luma: Uint8Array | Uint16Array, index: number) => void | Promise<void>
-
 /**
  * Decode a clip and hand over the raw luma codes of every decoded frame, once, in display order.
  *
@@ -35,15 +32,18 @@ export type OnFrame = (luma: Uint8Array | Uint16Array, index: number) => void | 
  *
  * @throws MediaError `decode-failed`, `frame-truncated`, `size-changes`; the signal's reason when aborted; what `onFrame` threw
  */
-export async function readFrames(path: string, clip: ReadableClip, { signal, firstFrame = 0, frameCount = Infinity, threads }: ReadFramesOptions, onFrame: OnFrame): Promise<ReadFramesResult> {
-  const frameBytes = clip.width * clip.height * (clip.bitDepth > 8 ? 2 : 1)
+export async function readFrames(path: string, clip: ReadableClip, { signal, firstFrame = 0, frameCount = Infinity, threads, target = ownTarget(clip) }: ReadFramesOptions, onFrame: OnFrame): Promise<ReadFramesResult> {
+  const frameBytes = frameBytesOf(clip)
   const last = firstFrame + frameCount
   const progress = new ProgressCount()
   const assembled = { frames: 0, bytes: 0 }
   const { exitCode, stderrTail, errorLines } = await runProcess('ffmpeg', decodeArguments(path, clip.container, threads, last), {
     signal,
     onSide: text => progress.add(text),
-    onOutput: stdout => assemble(stdout, clip, frameBytes, assembled, (luma, index) => index >= firstFrame && index < last ? onFrame(luma, index) : undefined),
+    onOutput: (stdout, stop) => assembleLuma(stdout, stop, clip, assembled, {
+      begin: index => index >= firstFrame && index < last ? target(index, frameBytes) : null,
+      take: onFrame,
+    }),
   })
   if (exitCode !== 0) throw new MediaError('decode-failed', `The decoder stopped after ${assembled.frames} frames: ${errorLines.at(-1) ?? `exit code ${exitCode}`}. The file may be damaged: upload it again from the card.`, { stderrTail })
   if (progress.frames !== null && assembled.bytes !== progress.frames * frameBytes) throw new MediaError('size-changes', `The picture size changes within the clip: it is not ${clip.width}×${clip.height} throughout. Record it again with one setting.`, { stderrTail })
@@ -52,37 +52,21 @@ export async function readFrames(path: string, clip: ReadableClip, { signal, fir
 }
 
 /**
- * extractplanes hands the luma codes on untouched (`-pix_fmt gray` would rescale them). With `-autoscale 0` a change of
- * size in mid-stream shows in the byte count instead of being rescaled. Frames are numbered anew behind the filter, since
- * the writer complains about timestamps that repeat.
+ * Options in front of the input, and the output's. extractplanes hands the luma codes on untouched (`-pix_fmt gray` would
+ * rescale them). With `-autoscale 0` a change of size in mid-stream shows in the byte count instead of being rescaled.
+ * Frames are numbered anew behind the filter, since the writer complains about timestamps that repeat.
  */
-function decodeArguments(path: string, container: string, threads: number | undefined, lastFrame: number): string[] {
+export function lumaArguments(path: string, container: string, { threads, input = [], filters = [], output = [] }: { threads?: number, input?: string[], filters?: string[], output?: string[] }): string[] {
   return [
     '-nostdin', '-hide_banner', '-v', 'error', '-noautorotate', ...threads === undefined ? [] : ['-threads', String(threads)],
-    ...inputLimits, ...editListOptions(container), '-i', inputFile(path),
-    '-map', '0:V:0', '-an', '-sn', '-dn', '-vf', 'extractplanes=y,settb=1/1000,setpts=N', '-enc_time_base', '1/1000', '-fps_mode', 'passthrough', '-autoscale', '0',
-    ...Number.isFinite(lastFrame) ? ['-frames:v', String(lastFrame)] : [],
-    '-progress', 'pipe:3', '-f', 'rawvideo', 'pipe:1',
+    ...inputLimits, ...editListOptions(container), ...input, '-i', inputFile(path),
+    '-map', '0:V:0', '-an', '-sn', '-dn', '-vf', [...filters, 'extractplanes=y', 'settb=1/1000', 'setpts=N'].join(','), '-enc_time_base', '1/1000', '-fps_mode', 'passthrough', '-autoscale', '0',
+    ...output, '-f', 'rawvideo', 'pipe:1',
   ]
 }
 
-async function assemble(stdout: Readable, { bitDepth }: ReadableClip, frameBytes: number, assembled: { frames: number, bytes: number }, onFrame: OnFrame): Promise<void> {
-  const frame = new Uint8Array(frameBytes)
-  const luma = bitDepth > 8 ? new Uint16Array(frame.buffer) : frame
-  let filled = 0
-  for await (const chunk of stdout as AsyncIterable<Uint8Array>) {
-    assembled.bytes += chunk.length
-    for (let at = 0; at < chunk.length;) {
-      const length = Math.min(chunk.length - at, frameBytes - filled)
-      frame.set(chunk.subarray(at, at + length), filled)
-      filled += length
-      at += length
-      if (filled < frameBytes) break
-      filled = 0
-      const pending = onFrame(luma, assembled.frames++)
-      if (pending) await pending
-    }
-  }
+function decodeArguments(path: string, container: string, threads: number | undefined, lastFrame: number): string[] {
+  return lumaArguments(path, container, { threads, output: [...Number.isFinite(lastFrame) ? ['-frames:v', String(lastFrame)] : [], '-progress', 'pipe:3'] })
 }
 
 /** Frames that ffmpeg says it wrote, from its progress lines. */

@@ -9,6 +9,10 @@ export interface PacketList {
   untimed: boolean
   /** Compressed size of the video. */
   bytes: number
+  /** Display numbers of the frames whose packets are marked as key, ascending. */
+  keyFrames: Int32Array
+  /** The same frames as their packets are stored. */
+  keysInDecodingOrder: Int32Array
   /** What ffprobe complained about while reading. */
   errorLines: string[]
 }
@@ -17,18 +21,20 @@ export interface PacketList {
 export async function listPackets(path: string, container: string, signal?: AbortSignal): Promise<PacketList> {
   const presentation: number[] = []
   const decoding: number[] = []
+  const keys: number[] = []
   let bytes = 0
   let partial = ''
   const add = (line: string) => {
     if (!line) return
-    const [pts, dts, size] = line.split(',')
+    const [pts, dts, size, flags] = line.split(',')
+    if (flags?.startsWith('K')) keys.push(presentation.length)
     presentation.push(ticksOf(pts))
     decoding.push(ticksOf(dts))
     bytes += Number(size)
   }
   const { errorLines } = await runProcess('ffprobe', [
     '-hide_banner', '-v', 'error', ...inputLimits, ...editListOptions(container),
-    '-select_streams', 'V:0', '-show_entries', 'packet=pts,dts,size', '-of', 'csv=p=0', inputFile(path),
+    '-select_streams', 'V:0', '-show_entries', 'packet=pts,dts,size,flags', '-of', 'csv=p=0', inputFile(path),
   ], {
     signal,
     onOutput: async (stdout) => {
@@ -42,8 +48,12 @@ export async function listPackets(path: string, container: string, signal?: Abor
   })
   const decodeTimesOnly = presentation.some(Number.isNaN)
   const untimed = decodeTimesOnly && decoding.some(Number.isNaN)
-  const ticks = untimed ? Float64Array.from(decoding.keys()) : Float64Array.from(decodeTimesOnly ? decoding : presentation).sort()
-  return { ticks, decodeTimesOnly, untimed, bytes, errorLines }
+  const times = untimed ? decoding.map((_, i) => i) : decodeTimesOnly ? decoding : presentation
+  const order = Int32Array.from(times.keys()).sort((a, b) => times[a] - times[b] || a - b)
+  const rank = new Int32Array(order.length)
+  order.forEach((packet, frame) => rank[packet] = frame)
+  const keysInDecodingOrder = Int32Array.from(keys, packet => rank[packet])
+  return { ticks: Float64Array.from(order, packet => times[packet]), decodeTimesOnly, untimed, bytes, keyFrames: keysInDecodingOrder.slice().sort(), keysInDecodingOrder, errorLines }
 }
 
 const ticksOf = (text: string | undefined) => text === undefined || text === '' || text === 'N/A' ? Number.NaN : Number(text)

@@ -2,7 +2,9 @@ import { stat } from 'node:fs/promises'
 import type { ClipFacts, CodeRange, Flag, Transfer } from '../../shared/measurement'
 import { clipFlags } from './clipFlags'
 import { resolveRange, resolveTransfer } from './colour'
+import { findEntryFrames } from './entryFrames'
 import { maximumPixels } from './ffmpegProcess'
+import type { FrameIndex } from './frameIndex'
 import { MediaError } from './mediaError'
 import { openContainer } from './openContainer'
 import { listPackets } from './packets'
@@ -15,6 +17,8 @@ export interface ProbeResult {
   flags: Flag[]
   /** Start of exposure of each decoded frame, in display order; the first is 0. */
   frameTimesSeconds: Float64Array
+  /** For random access to the frames. */
+  index: FrameIndex
 }
 
 /**
@@ -44,7 +48,8 @@ export async function probeClip(path: string, settings: { transfer: Transfer, ra
     bitsPerPixel: 8 * packets.bytes / (frameCount * video.width * video.height),
   }
   assertComplete(facts, video)
-  return { facts, flags: [...range.flags, ...transfer.flags, ...times.flags, ...clipFlags(facts, video, packets)], frameTimesSeconds: times.frameTimesSeconds }
+  const index: FrameIndex = { timeBase: video.timeBase, ticks: packets.ticks, keyFrames: packets.keyFrames, ...await findEntryFrames(path, container, video.codec, packets, signal) }
+  return { facts, flags: [...range.flags, ...transfer.flags, ...times.flags, ...clipFlags(facts, video, packets)], frameTimesSeconds: times.frameTimesSeconds, index }
 }
 
 function assertMeasurable({ width, height, pixelFormat, codec }: VideoStream): void {
