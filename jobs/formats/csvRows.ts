@@ -1,29 +1,48 @@
-import type { CsvLayout } from './csvLayout'
-import { scanNumber } from './numberScan'
+import { blanks, delimiters, type CsvLayout } from './csvLayout'
+import { plainEnd, scanNumber, scanPlain } from './numberScan'
 import { RecordError } from './recordError'
 
 const newline = 0x0a
+const space = 0x20
+const tab = 0x09
+const carriageReturn = 0x0d
+/** SCPI's numbers for "overload" and "no number" (SCPI-1999, volume 1, 7.2.1; from memory). */
+const smallestSentinel = 9.9e37
+const overload = /^"?(?:[-+]?\s*(?:ovl|ovld|ol|ovr|over(?:load|flow|range)?|1\.?#inf\w*|inf(?:inity)?|∞|clip(?:ped)?))"?$/i
+/** Lines of text after the last row of numbers that are passed over as a footer. */
+const footerLines = 20
+
+export interface RowsEnd {
+  /** The number of a last line that ends early and was left out. */
+  cutLine: number | null
+  /** Lines after the last row that are no rows and were left out. */
+  footer: { firstLine: number, lastLine: number, text: string } | null
+}
 
 /**
  * Scans data rows as bytes, in pieces of any size, and hands over the wanted columns of each.
  *
- * The values array is reused from row to row. Empty lines are skipped.
+ * The values array is reused from row to row. Empty lines are skipped. Lines that are no rows are errors when a row
+ * follows them, and a footer when none does.
  */
 export class CsvRows {
   private carry = new Uint8Array(0)
   private line = 0
   private readonly values: Float64Array
   private readonly delimiter: number
+  private readonly isRuns: boolean
   /** Column → places in `values`. */
   private readonly places: number[][]
+  private doubt: { error: RecordError, line: number, text: string } | null = null
 
   constructor(private readonly layout: CsvLayout, wanted: readonly number[], private readonly onRow: (values: Float64Array, line: number) => void) {
     this.values = new Float64Array(wanted.length)
     this.delimiter = layout.delimiter ? layout.delimiter.charCodeAt(0) : -1
+    this.isRuns = layout.delimiter === blanks
     this.places = Array.from({ length: Math.max(...wanted) + 1 }, (_, column) => wanted.flatMap((value, place) => value === column ? [place] : []))
   }
 
-  /** @throws RecordError `not-a-number`, `column-missing`, naming the line */
+  /** @throws RecordError `not-a-number`, `overload`, `column-missing`, naming the line */
   feed(chunk: Uint8Array): void {
     let bytes = chunk
     if (this.carry.length) {
@@ -39,46 +58,88 @@ export class CsvRows {
     this.carry = new Uint8Array(bytes.subarray(at))
   }
 
-  /** Takes the last line if it is whole. @returns its number when it ends early and was left out */
-  finish(): { cutLine: number | null } {
-    if (!this.carry.length) return { cutLine: null }
-    const cells = this.delimiter < 0 ? 1 : this.carry.reduce((count, byte) => byte === this.delimiter ? count + 1 : count, 1)
-    if (cells < this.layout.columnCount && this.carry.some(byte => byte > 0x20)) return { cutLine: this.line + 1 }
-    this.row(this.carry, 0, this.carry.length)
-    return { cutLine: null }
+  /** Takes the last line if it is whole. */
+  finish(): RowsEnd {
+    let cutLine: number | null = null
+    if (this.carry.length && !isEmpty(this.carry, 0, this.carry.length)) {
+      if (this.cells(this.carry) < this.layout.columnCount && !this.doubt) cutLine = this.line + 1
+      else this.row(this.carry, 0, this.carry.length)
+    }
+    return { cutLine, footer: this.doubt && { firstLine: this.doubt.line, lastLine: this.line, text: this.doubt.text } }
+  }
+
+  private cells(bytes: Uint8Array): number {
+    if (this.delimiter < 0) return 1
+    return new TextDecoder().decode(bytes).trim().split(this.isRuns ? /[ \t]+/ : this.layout.delimiter).length
   }
 
   private row(bytes: Uint8Array, from: number, to: number): void {
     this.line++
     if (this.line <= this.layout.headerLines || isEmpty(bytes, from, to)) return
-    let start = from
-    for (let column = 0; column < this.places.length; column++) {
-      if (start > to) throw this.missing(column)
-      let end = start
-      while (end < to && bytes[end] !== this.delimiter) end++
-      for (const place of this.places[column]) {
-        const value = scanNumber(bytes, start, end)
-        if (Number.isNaN(value)) throw this.notANumber(column, bytes, start, end)
-        this.values[place] = value
-      }
-      start = end + 1
+    const error = this.read(bytes, from, bytes[to - 1] === carriageReturn ? to - 1 : to)
+    if (error === null) {
+      if (this.doubt) throw this.doubt.error
+      this.onRow(this.values, this.line)
+      return
     }
-    this.onRow(this.values, this.line)
+    this.doubt ??= { error, line: this.line, text: textOf(bytes, from, to) }
+    if (error.code === 'overload' || this.line - this.doubt.line >= footerLines) throw this.doubt.error
+  }
+
+  /** The wanted columns of a line into `values`; an error instead of a throw, because a footer may still excuse it. */
+  private read(bytes: Uint8Array, from: number, to: number): RecordError | null {
+    const { places, delimiter, values, isRuns } = this
+    let start = isRuns ? skipBlanks(bytes, from, to) : from
+    for (let column = 0; column < places.length; column++) {
+      if (start > to || (isRuns && start === to)) return this.missing(column, bytes, from, to)
+      const wanted = places[column]
+      let end = start
+      if (wanted.length === 0) {
+        while (end < to && bytes[end] !== delimiter && !(isRuns && bytes[end] === tab)) end++
+      } else {
+        let value = scanPlain(bytes, start, to, delimiter)
+        end = plainEnd()
+        if (end < 0) {
+          end = start
+          while (end < to && bytes[end] !== delimiter && !(isRuns && bytes[end] === tab)) end++
+          value = scanNumber(bytes, start, end)
+        }
+        if (!(Math.abs(value) < smallestSentinel)) return this.notANumber(column, value, textOf(bytes, start, end))
+        for (let i = 0; i < wanted.length; i++) values[wanted[i]] = value
+      }
+      start = isRuns ? skipBlanks(bytes, end, to) : end + 1
+    }
+    return null
   }
 
   private columnName = (column: number) => this.layout.headers[column] ? `column “${this.layout.headers[column]}”` : `column ${column}`
 
-  private missing(column: number): RecordError {
+  private missing(column: number, bytes: Uint8Array, from: number, to: number): RecordError {
+    const text = textOf(bytes, from, to, 4000)
+    const other = delimiters.find(delimiter => delimiter !== this.layout.delimiter && delimiter !== blanks && text.split(delimiter).length === this.layout.columnCount)
+    if (other) return new RecordError('column-missing', `Line ${this.line} is split by ${nameOf(other)}, but the rows before it by ${nameOf(this.layout.delimiter)}. Export the record again, with one separator throughout.`)
     return new RecordError('column-missing', `Line ${this.line} ends before ${this.columnName(column)}. Export the record again, with every column in every row.`)
   }
 
-  private notANumber(column: number, bytes: Uint8Array, from: number, to: number): RecordError {
-    const text = new TextDecoder().decode(bytes.subarray(from, Math.min(to, from + 40))).trim()
-    return new RecordError('not-a-number', `Line ${this.line}, ${this.columnName(column)}: a number was expected, but ${text ? `“${text}”` : 'nothing'} stands there. Mend the line or export the record again.`)
+  private notANumber(column: number, value: number, text: string): RecordError {
+    const where = `Line ${this.line}, ${this.columnName(column)}`
+    if (overload.test(text) || Math.abs(value) === smallestSentinel) return new RecordError('overload', `${where}: “${text}” says that the input was overloaded, so its value is not known. Turn the input range up and record again.`)
+    return new RecordError('not-a-number', `${where}: a number was expected, but ${text ? `“${text}”` : 'nothing'} stands there. Mend the line or export the record again.`)
   }
 }
 
+const nameOf = (delimiter: string) => ({ '\t': 'tabs', ';': 'semicolons', ',': 'commas', '|': 'bars', ' ': 'blanks', '': 'nothing' })[delimiter]
+
+function textOf(bytes: Uint8Array, from: number, to: number, most = 40): string {
+  return new TextDecoder().decode(bytes.subarray(from, Math.min(to, from + most))).trim()
+}
+
+function skipBlanks(bytes: Uint8Array, from: number, to: number): number {
+  while (from < to && (bytes[from] === space || bytes[from] === tab)) from++
+  return from
+}
+
 function isEmpty(bytes: Uint8Array, from: number, to: number): boolean {
-  for (let i = from; i < to; i++) if (bytes[i] > 0x20) return false
+  for (let i = from; i < to; i++) if (bytes[i] > space) return false
   return true
 }

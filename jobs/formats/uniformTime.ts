@@ -34,11 +34,17 @@ export class UniformTime {
   /** The largest change of the deviation from one row to the next. */
   private jump: Deviation = { value: 0, row: 0, line: 0 }
   private before = 0
+  private readonly where: string
+
+  /** @param place how messages name a row: "Line" or "Sample" */
+  constructor(private readonly place = 'Line') {
+    this.where = place.toLowerCase()
+  }
 
   /** @throws RecordError `time-not-uniform` when the time does not move on */
   add(time: number, line: number): void {
     if (this.rows === 0) this.first = time
-    else if (!(time > this.last)) throw new RecordError('time-not-uniform', `Line ${line}: the time ${time} does not lie after the ${this.last} of the row before. Export the time with more digits, or leave the time column out and give the sample rate.`)
+    else if (!(time > this.last)) throw new RecordError('time-not-uniform', `${this.place} ${line}: the time ${time} does not lie after the ${this.last} of the row before. Export the time with more digits, or leave the time column out and give the sample rate.`)
     this.last = time
     this.rows++
     if (this.period === 0) this.gather(time, line)
@@ -59,8 +65,8 @@ export class UniformTime {
       if (Math.abs(off) > Math.abs(worst.value)) worst = { value: off, row, line }
     }
     if (Math.abs(worst.value) <= toleranceSamples * period) return { sampleRateHz: Number((1 / period).toPrecision(12)), startSeconds: this.first, flags: [] }
-    if (Math.abs(this.jump.value) > period / 2) throw new RecordError('time-not-uniform', `The samples are not evenly spaced in time: at line ${this.jump.line} the time steps by ${(1000 * (this.period + this.jump.value)).toPrecision(3)} ms instead of ${(1000 * this.period).toPrecision(3)} ms. If the logger’s clock was even, leave the time column out and give the sample rate; otherwise record again.`)
-    throw new RecordError('time-not-uniform', `The samples are not evenly spaced in time: line ${worst.line} is ${(1000 * Math.abs(worst.value)).toPrecision(3)} ms ${worst.value > 0 ? 'late' : 'early'}. If the logger’s clock was even, leave the time column out and give the sample rate; otherwise record again.`)
+    if (Math.abs(this.jump.value) > period / 2) throw new RecordError('time-not-uniform', `The samples are not evenly spaced in time: at ${this.where} ${this.jump.line} the time steps by ${(1000 * (this.period + this.jump.value)).toPrecision(3)} ms instead of ${(1000 * this.period).toPrecision(3)} ms. If the logger’s clock was even, leave the time column out and give the sample rate; otherwise record again.`)
+    throw new RecordError('time-not-uniform', `The samples are not evenly spaced in time: ${this.where} ${worst.line} is ${(1000 * Math.abs(worst.value)).toPrecision(3)} ms ${worst.value > 0 ? 'late' : 'early'}. If the logger’s clock was even, leave the time column out and give the sample rate; otherwise record again.`)
   }
 
   /** The first rows wait until the period can be guessed well. */

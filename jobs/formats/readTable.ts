@@ -1,0 +1,79 @@
+import type { Flag } from '../../shared/measurement'
+import { chooseColumns } from './recordColumns'
+import { RecordError } from './recordError'
+import { planRecord, storeBlock } from './recordSink'
+import type { RecordData, RecordOptions, RecordSeries, RecordTable } from './recordTable'
+
+const evidenceRows = 64
+
+/**
+ * Read the wanted channels of an opened record.
+ *
+ * Memory: four bytes a sample and wanted channel, and one block.
+ *
+ * @throws RecordError `too-short`, `no-illumination`, `unknown-column`, `ambiguous-columns`, `no-time`, `time-not-uniform`,
+ * `not-a-number`, `sensitivity-not-volts`, `file-cut`
+ */
+export async function readTable(table: RecordTable, options: RecordOptions): Promise<RecordData> {
+  const { format, description, columns, sampleRateHz } = table
+  const asked = options.columns ?? {}
+  const needsEvidence = sampleRateHz === null && asked.time === undefined && options.sampleRateHz === undefined
+  const chosen = chooseColumns(columns, asked, needsEvidence ? await firstRows(table, evidenceRows) : undefined)
+  const series = commonSeries(table, Object.values(chosen.columns))
+  const plan = planRecord(columns, chosen, options, series.sampleRateHz, series.startSeconds, 'Sample')
+  const { rows } = series
+  if (rows < 2) throw new RecordError('too-short', `The record has ${rows === 1 ? 'one sample' : 'no samples'}. Upload a record with at least two samples.`)
+  const data = plan.channels.map(() => new Float32Array(rows))
+  let at = 0
+  for await (const block of table.blocks(plan.wanted, 0, rows)) {
+    plan.channels.forEach((channel, i) => storeBlock(block[i], data[i], at, channel))
+    if (plan.times) addTimes(plan.times, block.at(-1)!, plan.timeScale, at)
+    at += block[0].length
+  }
+  const time = plan.timeBase()
+  return {
+    format, description, columns, rows, sampleRateHz: time.sampleRateHz, startSeconds: time.startSeconds,
+    channels: plan.channels.map(({ role, column, scale }, i) => ({ role, name: column.name, unit: scale.unit, data: data[i] })),
+    flags: [...table.flags, ...series.flags, ...time.flags, ...plan.flags],
+  }
+}
+
+function addTimes(times: { add: (time: number, row: number) => void }, block: Float64Array, scale: number, at: number): void {
+  for (let i = 0; i < block.length; i++) times.add(block[i] * scale, at + i)
+}
+
+/**
+ * Length, rate and start that hold for all of some columns; the shortest one's length.
+ *
+ * @throws RecordError `rates-differ`, `starts-differ`
+ */
+export function commonSeries(table: RecordTable, indices: readonly number[]): RecordSeries & { flags: Flag[] } {
+  const { seriesOf, columns, rows, sampleRateHz, startSeconds } = table
+  if (!seriesOf || !indices.length) return { rows, sampleRateHz, startSeconds, flags: [] }
+  const all = indices.map(seriesOf)
+  const name = (index: number) => `“${columns[index].name}”`
+  const [first] = all
+  const rate = first.sampleRateHz
+  const other = all.findIndex(series => series.sampleRateHz !== rate && !(rate && series.sampleRateHz && Math.abs(series.sampleRateHz / rate - 1) < 1e-6))
+  if (other > 0) throw new RecordError('rates-differ', `The channels are not sampled alike: ${name(indices[0])} at ${rate ?? 'an unknown rate'} Hz, ${name(indices[other])} at ${all[other].sampleRateHz ?? 'an unknown rate'} Hz. Take channels of one rate, or export them so.`)
+  const late = all.findIndex(series => Math.abs(series.startSeconds - first.startSeconds) * (rate ?? 1) > 0.5)
+  if (late > 0) throw new RecordError('starts-differ', `The channels do not begin together: ${name(indices[0])} at ${first.startSeconds} s, ${name(indices[late])} at ${all[late].startSeconds} s. Export them over one span.`)
+  const shortest = Math.min(...all.map(series => series.rows))
+  const flags: Flag[] = all.some(series => series.rows !== shortest) ? [{ code: 'lengths-differ', severity: 'warning', message: `The channels are not of one length; all are read for ${shortest} samples, as long as the shortest. Check that the record is whole.` }] : []
+  return { rows: shortest, sampleRateHz: rate, startSeconds: first.startSeconds, flags }
+}
+
+/** The first values of every column, at most `count`. */
+export async function firstRows(table: RecordTable, count: number): Promise<Float64Array[]> {
+  const { columns, seriesOf, rows } = table
+  if (!seriesOf) return gather(table, columns.map(({ index }) => index), Math.min(rows, count))
+  const all: Float64Array[] = []
+  for (const { index } of columns) all.push(...await gather(table, [index], Math.min(seriesOf(index).rows, count)))
+  return all
+}
+
+async function gather({ blocks }: RecordTable, wanted: number[], count: number): Promise<Float64Array[]> {
+  const parts: number[][] = wanted.map(() => [])
+  if (count > 0) for await (const block of blocks(wanted, 0, count)) block.forEach((values, i) => parts[i].push(...values))
+  return parts.map(values => Float64Array.from(values))
+}
