@@ -33,6 +33,9 @@ export interface AlignResult extends Alignment {
 /** More odd frames than this share are no accidents: lamp changes that the record has elsewhere look like them. */
 const mostOddShare = 0.003
 
+/** Below this share of measured frames the gaps are too wide to be bridged. */
+const sparseShare = 0.7
+
 function pose(input: AlignInput): AlignProblem {
   const { frameLight, frameTimesSeconds, illumination, sampleRateHz } = input
   if (frameLight.length !== frameTimesSeconds.length) throw new AlignError('Frame light and frame times differ in length; meter the clip again.')
@@ -46,12 +49,13 @@ function pose(input: AlignInput): AlignProblem {
   return {
     light, times,
     exposureSeconds: input.exposureSeconds,
-    frameSeconds: median(times.slice(1).map((time, k) => time - times[k])),
+    frameSeconds: median(frameTimesSeconds.slice(1).map((time, k) => time - frameTimesSeconds[k])),
     integrals: createLightIntegrals(illumination, sampleRateHz, input.darkLevel),
     recordSeconds: (illumination.length - 1) / sampleRateHz,
     tones: lampTones(illumination, sampleRateHz),
     maxDriftPpm: input.maxDriftPpm ?? 200,
     lightVariance: light.reduce((sum, value) => sum + (value - mean) ** 2, 0) / light.length,
+    sparse: light.length < sparseShare * frameLight.length,
   }
 }
 

@@ -1,3 +1,4 @@
+import { sparseScan } from './alignCoarseSparse'
 import type { AlignProblem } from './alignProblem'
 import { beatAmplitude } from './lampTones'
 import { windowMean } from './lightPrediction'
@@ -10,6 +11,8 @@ export interface CoarseCandidate {
   score: number
   /** Step of the search, seconds: the offset is good to about this. */
   stepSeconds: number
+  /** Distance between the drifts searched; all of ± the largest drift when there was one only. */
+  driftStepPpm: number
 }
 
 interface Series {
@@ -20,8 +23,8 @@ interface Series {
 
 /** Overlap searched, as a share of the shorter one of clip and record. */
 const leastOverlap = 0.2
-/** Bound on phases × drifts × N·log2 N of the transforms. */
-const transformBudget = 4e7
+/** Bound on phases × drifts × N·log2 N of the transforms; sparse light has little else than its beat to tell places by. */
+const transformBudget = { complete: 4e7, sparse: 6e7 }
 
 function prefixed(values: Float64Array): Series {
   const sum = new Float64Array(values.length + 1)
@@ -33,8 +36,8 @@ function prefixed(values: Float64Array): Series {
   return { values, sum, squares }
 }
 
-/** Frame light on a uniform grid of `step` seconds (means of the frames in a bin, gaps bridged), mean removed. */
-function uniformLight(problem: AlignProblem, step: number, framesPerStep: number): Float64Array {
+/** Frame light on a uniform grid of `step` seconds (means of the frames in a bin, gaps bridged), mean removed, and which bins have some. */
+function uniformLight(problem: AlignProblem, step: number, framesPerStep: number) {
   const { times, light } = problem
   const size = Math.floor(times[times.length - 1] / step + 0.5) + 1
   const sums = new Float64Array(size)
@@ -51,7 +54,7 @@ function uniformLight(problem: AlignProblem, step: number, framesPerStep: number
     if (counts[bin] > 0) last = sums[bin] / counts[bin]
     sums[bin] = last
   }
-  return sums
+  return { values: sums, measured: Uint8Array.from(counts, count => Number(count > 0)) }
 }
 
 /** How finely offset and drift must be searched: by the fastest tone that leaves a beat, within the budget. */
@@ -65,7 +68,8 @@ function searchPlan(problem: AlignProblem) {
   const size = powerOfTwo(Math.ceil((clipSeconds + problem.recordSeconds) / step) + 4)
   let phases = Math.min(64, Math.max(4, Math.ceil(4 * fastest * step)))
   let drifts = Math.max(1, Math.ceil(edgeDrifts / framesPerStep), Math.ceil(2e-6 * problem.maxDriftPpm * clipSeconds * fastest))
-  while (phases * drifts * size * Math.log2(size) > transformBudget && (phases > 4 || drifts > 3)) {
+  const budget = problem.sparse ? transformBudget.sparse : transformBudget.complete
+  while (phases * drifts * size * Math.log2(size) > budget && (phases > 4 || drifts > 3)) {
     if (drifts > 3 && drifts >= phases / 2) drifts = Math.ceil(drifts / 2)
     else if (phases > 4) phases = Math.ceil(phases / 2)
     else drifts = Math.ceil(drifts / 2)
@@ -116,6 +120,19 @@ function scanLags(light: Series, predicted: Series, correlation: Float64Array, v
   }
 }
 
+/** As `sparseScan`, for light without gaps: sums of an overlap come from running sums. */
+function completeScan(values: Float64Array, size: number) {
+  const light = prefixed(values)
+  const spectrum = { re: new Float64Array(size), im: new Float64Array(size) }
+  spectrum.re.set(values)
+  fft(spectrum.re, spectrum.im)
+  const scratch = { re: new Float64Array(size), im: new Float64Array(size) }
+  return (predicted: Float64Array, visit: (lag: number, score: number) => void) => {
+    correlate(spectrum, predicted, scratch)
+    scanLags(light, prefixed(predicted), scratch.re, visit)
+  }
+}
+
 /**
  * Every offset at which a useful part of clip and record overlaps (a fifth of the shorter one), by normalised
  * cross-correlation of the measured frame light with the predicted one, for a few drifts and for fractions of a frame.
@@ -125,11 +142,8 @@ function scanLags(light: Series, predicted: Series, correlation: Float64Array, v
  */
 export function coarseCandidates(problem: AlignProblem, most: number): CoarseCandidate[] {
   const { step, framesPerStep, phases, drifts, size } = searchPlan(problem)
-  const light = prefixed(uniformLight(problem, step, framesPerStep))
-  const spectrum = { re: new Float64Array(size), im: new Float64Array(size) }
-  spectrum.re.set(light.values)
-  fft(spectrum.re, spectrum.im)
-  const scratch = { re: new Float64Array(size), im: new Float64Array(size) }
+  const light = uniformLight(problem, step, framesPerStep)
+  const scan = problem.sparse ? sparseScan(light.values, light.measured, size) : completeScan(light.values, size)
   const window = framesPerStep === 1 ? problem.exposureSeconds : step
   const half = problem.times[problem.times.length - 1] / 2
   // Two cells a step, the first for the earliest offset: the best score in each, and what made it.
@@ -144,8 +158,7 @@ export function coarseCandidates(problem: AlignProblem, most: number): CoarseCan
       if (length < 2) continue
       const values = new Float64Array(length)
       for (let j = 0; j < length; j++) values[j] = windowMean(problem.integrals, start + j * stretched, window)
-      correlate(spectrum, values, scratch)
-      scanLags(light, prefixed(values), scratch.re, (lag, score) => {
+      scan(values, (lag, score) => {
         const offset = lag * stretched + start
         const cell = Math.min(cells - 1, Math.max(0, Math.round((offset + driftPpm * 1e-6 * half) / step * 2) + 2 * light.values.length + 2))
         if (score <= best.score[cell]) return
@@ -157,7 +170,7 @@ export function coarseCandidates(problem: AlignProblem, most: number): CoarseCan
   }
   const candidates: CoarseCandidate[] = []
   for (const cell of separated(best.score, most)) {
-    candidates.push({ offsetSeconds: best.offset[cell], driftPpm: best.drift[cell], score: best.score[cell], stepSeconds: step / phases })
+    candidates.push({ offsetSeconds: best.offset[cell], driftPpm: best.drift[cell], score: best.score[cell], stepSeconds: step / phases, driftStepPpm: 2 * problem.maxDriftPpm / drifts })
   }
   return candidates
 }

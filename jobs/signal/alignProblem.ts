@@ -15,6 +15,8 @@ export interface AlignProblem {
   maxDriftPpm: number
   /** Mean square of light about its mean. */
   lightVariance: number
+  /** Only a few frames of the clip are measured (key frames, windows), see `planGlance`. */
+  sparse: boolean
 }
 
 /** An alignment in the making; `middleSeconds` is the record time of clip time `pivotSeconds`. */

@@ -14,7 +14,7 @@ interface Spanned {
   range: FrameRange
 }
 
-const mostCandidates = 12
+const mostCandidates = { complete: 12, sparse: 60 }
 const mostPolished = 24
 /** Longer clips are aligned on a stretch of this length first, which is then doubled up to the whole. */
 const firstSpanSeconds = 60
@@ -59,11 +59,13 @@ function gridStep(problem: AlignProblem): number {
 
 /** Grid minima of one coarse candidate on its first stretch. */
 function expand(problem: AlignProblem, candidate: CoarseCandidate, step: number): Spanned[] {
-  const range = liveliestSpan(problem, coveredRange(problem, candidate.offsetSeconds), firstSpanSeconds)
+  const covered = coveredRange(problem, candidate.offsetSeconds)
+  const range = problem.sparse ? covered : liveliestSpan(problem, covered, firstSpanSeconds)
   const pivotSeconds = (problem.times[range.fromFrame] + problem.times[range.toFrame - 1]) / 2
   const middleSeconds = candidate.offsetSeconds + (1 + candidate.driftPpm * 1e-6) * pivotSeconds
-  const halfRangeSeconds = Math.max(problem.frameSeconds * 0.6, 2 * candidate.stepSeconds)
-  const area = { ...range, middleSeconds, pivotSeconds, halfRangeSeconds, stepSeconds: step, driftPpm: 0, halfRangePpm: problem.maxDriftPpm }
+  const halfRangeSeconds = problem.sparse ? 2 * candidate.stepSeconds : Math.max(problem.frameSeconds * 0.6, 2 * candidate.stepSeconds)
+  const drift = problem.sparse ? { driftPpm: candidate.driftPpm, halfRangePpm: candidate.driftStepPpm } : { driftPpm: 0, halfRangePpm: problem.maxDriftPpm }
+  const area = { ...range, middleSeconds, pivotSeconds, halfRangeSeconds, stepSeconds: step, ...drift }
   return searchGrid(problem, area, 10).map(solution => ({ solution, range }))
 }
 
@@ -111,7 +113,7 @@ function distinct<T extends { solution: AlignSolution }>(problem: AlignProblem, 
  */
 export function searchAlignment(problem: AlignProblem): { best: Polished, second: Polished | null } | null {
   const step = gridStep(problem)
-  const candidates = coarseCandidates(problem, mostCandidates)
+  const candidates = coarseCandidates(problem, problem.sparse ? mostCandidates.sparse : mostCandidates.complete)
   const minima = distinct(problem, candidates.flatMap(candidate => expand(problem, candidate, step)), step)
   if (!minima.length) return null
   const polished = minima.slice(0, mostPolished).map(({ solution, range }) => ({ solution: polish(problem, solution, range), range }))
