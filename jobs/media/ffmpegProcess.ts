@@ -2,6 +2,7 @@ import { spawn, type ChildProcess } from 'node:child_process'
 import { resolve } from 'node:path'
 import type { Readable } from 'node:stream'
 import { MediaError } from './mediaError'
+import { PixelPipe } from './pixelPipe'
 
 /**
  * ffmpeg guesses a file's format from its content, and a playlist can name other files and addresses. Only these
@@ -28,8 +29,10 @@ export interface ProcessOptions {
   signal?: AbortSignal
   /** The process is ended after this long. */
   timeoutSeconds?: number
-  /** Takes standard output; the process is ended when it throws or calls `stop`. Without it, output is dropped. */
-  onOutput?: (stdout: Readable, stop: () => void) => Promise<void>
+  /** Takes standard output as text or bytes; the process is ended when it throws. Without it and `onPixels`, output is dropped. */
+  onOutput?: (stdout: Readable) => Promise<void>
+  /** Takes standard output instead where it is much; the process is ended when it throws or calls `stop`. */
+  onPixels?: (pipe: PixelPipe, stop: () => void) => Promise<void>
   /** Takes file descriptor 3, for `-progress pipe:3`. */
   onSide?: (text: string) => void
   onSideEnd?: () => void
@@ -39,7 +42,7 @@ export interface ProcessOptions {
 
 export interface ProcessResult {
   exitCode: number | null
-  /** `onOutput` had enough. */
+  /** `onPixels` had enough. */
   stopped: boolean
   stderrTail: string
   /** Lines on standard error, the first 50. With `-v error` each is an error. */
@@ -52,9 +55,13 @@ export interface ProcessResult {
  * @throws the signal's reason when aborted, what `onOutput` threw, or MediaError `ffmpeg-missing` or `ffmpeg-timeout`;
  * a non-zero exit is not an error here, because only the caller can say what it means
  */
-export async function runProcess(program: 'ffmpeg' | 'ffprobe', args: string[], { signal, timeoutSeconds, onOutput, onSide, onSideEnd, onErrorLine }: ProcessOptions = {}): Promise<ProcessResult> {
+export async function runProcess(program: 'ffmpeg' | 'ffprobe', args: string[], { signal, timeoutSeconds, onOutput, onPixels, onSide, onSideEnd, onErrorLine }: ProcessOptions = {}): Promise<ProcessResult> {
   signal?.throwIfAborted()
-  const child = spawn(program, args, { stdio: ['ignore', onOutput ? 'pipe' : 'ignore', 'pipe', onSide ? 'pipe' : 'ignore'], windowsHide: true })
+  const pipe = onPixels && await PixelPipe.open()
+  if (signal?.aborted) pipe?.abandon()
+  signal?.throwIfAborted()
+  const child = spawn(program, args, { stdio: ['ignore', pipe ? pipe.writeEnd : onOutput ? 'pipe' : 'ignore', 'pipe', onSide ? 'pipe' : 'ignore'], windowsHide: true })
+  pipe?.closeWriteEnd()
   const exited = exitOf(child, program)
   const kill = () => child.kill('SIGKILL')
   let timedOut = false
@@ -74,7 +81,7 @@ export async function runProcess(program: 'ffmpeg' | 'ffprobe', args: string[], 
   if (onSide) (child.stdio[3] as Readable).setEncoding('utf8').on('data', onSide).on('close', () => onSideEnd?.())
   try {
     // The exit is watched from the start, so that a missing program is not an unhandled rejection while output is read.
-    const [exitCode] = await Promise.all([exited, onOutput?.(child.stdout!, stop)])
+    const [exitCode] = await Promise.all([exited, pipe ? onPixels!(pipe, stop) : onOutput?.(child.stdout!)])
     signal?.throwIfAborted()
     if (timedOut) throw new MediaError('ffmpeg-timeout', `${program} did not finish within ${timeoutSeconds} s. The file may be damaged: export it again from the camera.`, { stderrTail: stderr.tail() })
     return { exitCode, stopped, stderrTail: stderr.tail(), errorLines: stderr.lines }

@@ -10,7 +10,7 @@ export type { FrameRange } from './rangePlan'
 
 export interface ReadRangesOptions {
   signal?: AbortSignal
-  /** Decoder threads; as many as ffmpeg likes when left out. */
+  /** Decoder threads; two more than there are cores when left out. Results do not depend on it. */
   threads?: number
   /** Where each frame is read to, asked once a frame. */
   target?: FrameTarget
@@ -112,7 +112,7 @@ async function decodeFrom({ path, clip, index, options, onFrame }: Source, start
     onSide: frameTicks.add,
     onSideEnd: frameTicks.end,
     onErrorLine: judge.complain,
-    onOutput: (stdout, stop) => assembleLuma(stdout, stop, clip, { frames: 0, bytes: 0 }, {
+    onPixels: (pipe, stop) => assembleLuma(pipe, stop, clip, { frames: 0, bytes: 0 }, {
       begin,
       take: async (luma) => {
         await onFrame(luma, judge.next - 1)
@@ -126,8 +126,8 @@ async function decodeFrom({ path, clip, index, options, onFrame }: Source, start
 }
 
 function rangeArguments(path: string, clip: ReadableClip, { timeBase }: FrameIndex, threads: number | undefined, start: Start): string[] {
-  // Half a tick more, since ffmpeg takes whole microseconds and must not fall short of the key frame.
-  const seekSeconds = start && (start.tick + 0.5) * timeBase.numerator / timeBase.denominator
+  // ffmpeg takes whole microseconds, which must not fall short of the key frame.
+  const seekSeconds = start && Math.ceil(1e6 * start.tick * timeBase.numerator / timeBase.denominator) / 1e6
   return lumaArguments(path, clip.container, {
     threads, filters: [ticksFilter],
     input: ['-copyts', ...seekSeconds === null ? [] : ['-noaccurate_seek', '-seek_timestamp', '1', '-ss', seekSeconds.toFixed(6)]],

@@ -1,3 +1,4 @@
+import { availableParallelism } from 'node:os'
 import { editListOptions, inputFile, inputLimits, runProcess } from './ffmpegProcess'
 import { assembleLuma, frameBytesOf, ownTarget, type FrameTarget, type OnFrame, type ReadableClip } from './lumaStream'
 import { MediaError } from './mediaError'
@@ -10,7 +11,7 @@ export interface ReadFramesOptions {
   firstFrame?: number
   /** Frames to hand over; to the clip's end when left out. */
   frameCount?: number
-  /** Decoder threads; as many as ffmpeg likes when left out. */
+  /** Decoder threads; two more than there are cores when left out. Results do not depend on it. */
   threads?: number
   /** Where each frame is read to, asked once a frame: saves a copy when that is a kernel's own memory. */
   target?: FrameTarget
@@ -40,7 +41,7 @@ export async function readFrames(path: string, clip: ReadableClip, { signal, fir
   const { exitCode, stderrTail, errorLines } = await runProcess('ffmpeg', decodeArguments(path, clip.container, threads, last), {
     signal,
     onSide: text => progress.add(text),
-    onOutput: (stdout, stop) => assembleLuma(stdout, stop, clip, assembled, {
+    onPixels: (pipe, stop) => assembleLuma(pipe, stop, clip, assembled, {
       begin: index => index >= firstFrame && index < last ? target(index, frameBytes) : null,
       take: onFrame,
     }),
@@ -51,6 +52,9 @@ export async function readFrames(path: string, clip: ReadableClip, { signal, fir
   return { frameCount: Math.max(0, Math.min(assembled.frames, last) - firstFrame), stderrTail, errorLines }
 }
 
+/** One frame more in the making than ffmpeg's own choice fills the time in which a frame waits to be written out. */
+const defaultThreads = () => Math.min(16, availableParallelism() + 2)
+
 /**
  * Options in front of the input, and the output's. extractplanes hands the luma codes on untouched (`-pix_fmt gray` would
  * rescale them). With `-autoscale 0` a change of size in mid-stream shows in the byte count instead of being rescaled.
@@ -58,7 +62,7 @@ export async function readFrames(path: string, clip: ReadableClip, { signal, fir
  */
 export function lumaArguments(path: string, container: string, { threads, input = [], filters = [], output = [] }: { threads?: number, input?: string[], filters?: string[], output?: string[] }): string[] {
   return [
-    '-nostdin', '-hide_banner', '-v', 'error', '-noautorotate', ...threads === undefined ? [] : ['-threads', String(threads)],
+    '-nostdin', '-hide_banner', '-v', 'error', '-noautorotate', '-threads', String(threads ?? defaultThreads()),
     ...inputLimits, ...editListOptions(container), ...input, '-i', inputFile(path),
     '-map', '0:V:0', '-an', '-sn', '-dn', '-vf', [...filters, 'extractplanes=y', 'settb=1/1000', 'setpts=N'].join(','), '-enc_time_base', '1/1000', '-fps_mode', 'passthrough', '-autoscale', '0',
     ...output, '-f', 'rawvideo', 'pipe:1',

@@ -27,7 +27,7 @@ export async function readKeyFrames(path: string, clip: ReadableClip, index: Fra
     onSide: ticks.add,
     onSideEnd: ticks.end,
     onErrorLine: () => void complaints++,
-    onOutput: (stdout, stop) => assembleLuma(stdout, stop, clip, { frames: 0, bytes: 0 }, {
+    onPixels: (pipe, stop) => assembleLuma(pipe, stop, clip, { frames: 0, bytes: 0 }, {
       async begin(output) {
         const tick = await ticks.of(output)
         await new Promise(settle => setImmediate(settle))

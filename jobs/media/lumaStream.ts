@@ -1,5 +1,5 @@
-import type { Readable } from 'node:stream'
 import type { ClipFacts } from '../../shared/measurement'
+import type { PixelPipe } from './pixelPipe'
 
 /** What the reader must know of a clip. */
 export type ReadableClip = Pick<ClipFacts, 'container' | 'width' | 'height' | 'bitDepth'>
@@ -27,31 +27,72 @@ export interface Assembled {
   bytes: number
 }
 
-/** Cut a stream of bytes into frames. Calls `stop` when the handler wants no more, while the stream is still open. */
-export async function assembleLuma(stdout: Readable, stop: () => void, clip: ReadableClip, assembled: Assembled, { begin, take, done }: LumaHandler): Promise<void> {
-  const frameBytes = frameBytesOf(clip)
-  let filled = 0
-  let target: Uint8Array | null = null
-  for await (const chunk of stdout as AsyncIterable<Uint8Array>) {
-    assembled.bytes += chunk.length
-    for (let at = 0; at < chunk.length;) {
-      if (filled === 0) {
-        const begun = begin(assembled.frames)
-        const where = begun instanceof Promise ? await begun : begun
-        if (where === 'stop') return stop()
-        target = where
-      }
-      const length = Math.min(chunk.length - at, frameBytes - filled)
-      target?.set(chunk.subarray(at, at + length), filled)
-      filled += length
-      at += length
-      if (filled < frameBytes) break
-      filled = 0
-      const index = assembled.frames++
-      const pending = target ? take(codesOf(target, clip), index) : undefined
-      if (pending) await pending
-      if (done?.()) return stop()
+/** Cut what comes through a pipe into frames. Calls `stop` when the handler wants no more, while the pipe is still open. */
+export function assembleLuma(pipe: PixelPipe, stop: () => void, clip: ReadableClip, assembled: Assembled, handler: LumaHandler): Promise<void> {
+  const assembler = new LumaAssembler(clip, stop, assembled, handler)
+  return pipe.read(assembler.memory, assembler.filled)
+}
+
+/**
+ * Lets frames be read right into the memory that the handler names for them. That memory is asked for when a frame's
+ * first byte is there; until it is known, bytes are read one by one into the lead.
+ */
+class LumaAssembler {
+  private readonly frameBytes: number
+  private readonly dropped: Uint8Array
+  private readonly lead = new Uint8Array(8)
+  private isLeading = true
+  private target: Uint8Array | undefined
+  private isDropped = false
+  /** Bytes in the lead or in the target. */
+  private count = 0
+
+  constructor(private readonly clip: ReadableClip, private readonly stop: () => void, private readonly assembled: Assembled, private readonly handler: LumaHandler) {
+    this.frameBytes = frameBytesOf(clip)
+    this.dropped = new Uint8Array(this.frameBytes)
+  }
+
+  readonly memory = (): Uint8Array => this.isLeading ? this.lead.subarray(this.count, this.count + 1) : this.target!.subarray(this.count, this.frameBytes)
+
+  readonly filled = (bytes: number): boolean | Promise<boolean> => {
+    this.assembled.bytes += bytes
+    this.count += bytes
+    if (!this.isLeading) return this.count < this.frameBytes || this.finish()
+    if (this.target) return this.adoptLead()
+    const where = this.handler.begin(this.assembled.frames)
+    // While the handler makes up its mind, the lead's next byte is where reading goes on.
+    return where instanceof Promise ? where.then(decided => this.accept(decided)) : this.accept(where) && this.adoptLead()
+  }
+
+  private accept(where: Uint8Array | null | 'stop'): boolean {
+    if (where === 'stop') {
+      this.stop()
+      return false
     }
+    this.isDropped = where === null
+    this.target = where ?? this.dropped
+    return true
+  }
+
+  private adoptLead(): boolean | Promise<boolean> {
+    this.target!.set(this.lead.subarray(0, this.count))
+    this.isLeading = false
+    return this.count < this.frameBytes || this.finish()
+  }
+
+  private finish(): boolean | Promise<boolean> {
+    const index = this.assembled.frames++
+    const pending = this.isDropped ? undefined : this.handler.take(codesOf(this.target!, this.clip), index)
+    this.isLeading = true
+    this.target = undefined
+    this.count = 0
+    return pending ? pending.then(() => this.goOn()) : this.goOn()
+  }
+
+  private goOn(): boolean {
+    if (!this.handler.done?.()) return true
+    this.stop()
+    return false
   }
 }
 
