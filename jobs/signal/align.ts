@@ -1,8 +1,11 @@
-import type { Alignment, AlignmentEvidence } from '../../shared/measurement'
+import { alignmentReviewBelow, type Alignment, type AlignmentEvidence, type FrameLoss } from '../../shared/measurement'
 import { gradeAlignment } from './alignConfidence'
+import { searchNear, stayed } from './alignNear'
 import { evaluateAt, polish, type Polished } from './alignPolish'
 import { median, offsetOf, type AlignProblem } from './alignProblem'
 import { searchAlignment } from './alignSearch'
+import { correctFrameTimes } from './frameLoss'
+import { findLosses, timingDisagrees, type FoundLosses } from './frameLossSearch'
 import { lampTones } from './lampTones'
 import { createLightIntegrals, predictFrameLight } from './lightPrediction'
 
@@ -28,6 +31,8 @@ export interface AlignResult extends Alignment {
   evidence: AlignmentEvidence
   /** gain · mean lamp signal + background for every frame, in the unit of `frameLight`; NaN outside of the record. */
   predicted: Float64Array
+  /** Time missing in mid-clip, in order; offset and drift refer to clip times corrected by it (`correctFrameTimes`). */
+  losses: FrameLoss[]
 }
 
 /** More odd frames than this share are no accidents: lamp changes that the record has elsewhere look like them. */
@@ -36,7 +41,7 @@ const mostOddShare = 0.003
 /** Below this share of measured frames the gaps are too wide to be bridged. */
 const sparseShare = 0.7
 
-function pose(input: AlignInput): AlignProblem {
+function pose(input: AlignInput, known?: AlignProblem): AlignProblem {
   const { frameLight, frameTimesSeconds, illumination, sampleRateHz } = input
   if (frameLight.length !== frameTimesSeconds.length) throw new AlignError('Frame light and frame times differ in length; meter the clip again.')
   const kept: number[] = []
@@ -47,12 +52,12 @@ function pose(input: AlignInput): AlignProblem {
   const times = Float64Array.from(kept, k => frameTimesSeconds[k])
   const mean = light.reduce((sum, value) => sum + value, 0) / light.length
   return {
-    light, times,
+    light, times, frames: Int32Array.from(kept),
     exposureSeconds: input.exposureSeconds,
     frameSeconds: median(frameTimesSeconds.slice(1).map((time, k) => time - frameTimesSeconds[k])),
-    integrals: createLightIntegrals(illumination, sampleRateHz, input.darkLevel),
+    integrals: known?.integrals ?? createLightIntegrals(illumination, sampleRateHz, input.darkLevel),
     recordSeconds: (illumination.length - 1) / sampleRateHz,
-    tones: lampTones(illumination, sampleRateHz),
+    tones: known?.tones ?? lampTones(illumination, sampleRateHz),
     maxDriftPpm: input.maxDriftPpm ?? 200,
     lightVariance: light.reduce((sum, value) => sum + (value - mean) ** 2, 0) / light.length,
     sparse: light.length < sparseShare * frameLight.length,
@@ -74,14 +79,65 @@ function pose(input: AlignInput): AlignProblem {
  * Accuracy on seeded truth, clips of 20 s and more with edges or beat: offset 0.01 frame, drift 3 ppm.
  */
 export function alignClip(input: AlignInput): AlignResult {
-  const first = attempt(input, input.frameLight)
+  const problem = pose(input)
+  return conclude(input, problem, searchAlignment(problem), 'search')
+}
+
+/**
+ * The alignment made anew from a start that is known to be good, as after a glance, now with the light of all frames: the
+ * minimum next to it is polished and a quick coarse search looks whether any other place of the record fits as well. When
+ * the fit moves away from the start, or is not sure, the full search of `alignClip` decides.
+ *
+ * @param previous offset and drift to start from, good to half a frame
+ * @returns and throws as `alignClip`
+ */
+export function alignNear(input: AlignInput, previous: { offsetSeconds: number, driftPpm: number }): AlignResult {
+  const problem = pose(input)
+  const found = searchNear(problem, previous)
+  if (!found || !stayed(problem, previous, found.best)) return conclude(input, problem, searchAlignment(problem), 'search')
+  const near = conclude(input, problem, found, 'near')
+  return near.confidence >= alignmentReviewBelow ? near : conclude(input, problem, searchAlignment(problem), 'search')
+}
+
+interface Found {
+  best: Polished
+  second: Polished | null
+}
+
+/** From the best fit to the result: losses in mid-clip, single odd frames, grade. */
+function conclude(input: AlignInput, problem: AlignProblem, found: Found | null, how: 'search' | 'near'): AlignResult {
+  if (!found) {
+    const reason = 'The light of the clip and the lamp signal have nothing in common; check that clip, record and channel belong together, or set offset and drift by hand.'
+    return unjudged(input, { offsetSeconds: 0, driftPpm: 0, method: 'light', version: 1 }, reason)
+  }
+  const lost = !problem.sparse && timingDisagrees(problem, found.best) ? findLosses(problem, found.best) : null
+  if (lost) return reportLosses(input, lost)
+  const first = report(input, problem, found)
   const odd = oddFrames(input.frameLight, first.predicted)
   if (first.confidence === 0 || odd.length === 0 || odd.length > Math.max(2, mostOddShare * input.frameLight.length)) return first
   const light = input.frameLight.slice()
   for (const frame of odd) light[frame] = Number.NaN
-  const second = attempt(input, light)
+  const without = pose({ ...input, frameLight: light }, problem)
+  const start = { offsetSeconds: first.offsetSeconds, driftPpm: first.driftPpm }
+  const again = (how === 'near' && searchNear(without, start)) || searchAlignment(without)
+  if (!again) return first
+  const second = report(input, without, again)
   second.evidence.reasons.push(`${odd.length} ${odd.length === 1 ? 'frame' : 'frames'} whose light no timing explains (first: frame ${odd[0]}) ${odd.length === 1 ? 'was' : 'were'} left out of the fit.`)
   return second
+}
+
+function reportLosses(input: AlignInput, lost: FoundLosses): AlignResult {
+  const losses = lost.losses.map(loss => ({ ...loss, frame: lost.problem.frames[loss.frame], uncertainFrames: lost.problem.frames[loss.frame] - lost.problem.frames[loss.frame - loss.uncertainFrames] }))
+  const corrected = { ...input, frameTimesSeconds: correctFrameTimes(input.frameTimesSeconds, losses) }
+  const near = searchNear(lost.problem, { offsetSeconds: offsetOf(lost.solution), driftPpm: lost.solution.driftPpm })
+  const result = report(corrected, lost.problem, { best: lost.solution, second: near?.second ?? null })
+  result.losses = losses
+  for (const { frame, uncertainFrames, lostFrames } of losses) {
+    const what = lostFrames >= 0 ? `${lostFrames} ${lostFrames === 1 ? 'frame is' : 'frames are'} missing` : `${-lostFrames} ${lostFrames === -1 ? 'frame is' : 'frames are'} doubled`
+    const where = uncertainFrames > 0 ? `somewhere between frames ${frame - uncertainFrames - 1} and ${frame}` : `right before frame ${frame}`
+    result.evidence.reasons.push(`By the light, ${what} ${where}, though the timestamps run on; later frames are timed anew.`)
+  }
+  return result
 }
 
 /**
@@ -114,17 +170,8 @@ function unjudged(input: AlignInput, alignment: Pick<Alignment, 'offsetSeconds' 
     ...alignment, residual: 1, confidence: 0,
     evidence: { gain: 0, background: 0, secondBestRatio: null, secondBestOffsetSeconds: null, edges: 0, beat: false, reasons: [reason] },
     predicted: new Float64Array(input.frameLight.length).fill(Number.NaN),
+    losses: [],
   }
-}
-
-function attempt(input: AlignInput, frameLight: Float64Array): AlignResult {
-  const problem = pose({ ...input, frameLight })
-  const found = searchAlignment(problem)
-  if (!found) {
-    const reason = 'The light of the clip and the lamp signal have nothing in common; check that clip, record and channel belong together, or set offset and drift by hand.'
-    return unjudged(input, { offsetSeconds: 0, driftPpm: 0, method: 'light', version: 1 }, reason)
-  }
-  return report(input, problem, found)
 }
 
 /** What a solution predicts, its residual, and how far it may be trusted. */
@@ -141,7 +188,7 @@ function report(input: AlignInput, problem: AlignProblem, found: { best: Polishe
   }
   const residual = highest > lowest ? Math.min(1, Math.sqrt(best.squares / best.frames) / (highest - lowest)) : 1
   const { confidence, evidence } = gradeAlignment(problem, { ...found, residual })
-  return { offsetSeconds: timing.offsetSeconds, driftPpm: timing.driftPpm, residual, confidence, method: 'light', version: 1, evidence, predicted }
+  return { offsetSeconds: timing.offsetSeconds, driftPpm: timing.driftPpm, residual, confidence, method: 'light', version: 1, evidence, predicted, losses: [] }
 }
 
 /** Single frames far off their prediction where it is so level that no error of timing can be the reason. */

@@ -65,7 +65,7 @@ function featureSentence(problem: AlignProblem, edges: number, beat: boolean): s
 }
 
 /** Light and error (NaN where the record does not cover it) of every frame under a solution. */
-function errorsOf(problem: AlignProblem, solution: Polished): Float64Array {
+export function errorsOf(problem: AlignProblem, solution: Polished): Float64Array {
   const timing = { frameTimesSeconds: problem.times, exposureSeconds: problem.exposureSeconds, offsetSeconds: offsetOf(solution), driftPpm: solution.driftPpm }
   return predictFrameLight(problem.integrals, timing).map((mean, k) => problem.light[k] - solution.gain * mean - solution.background)
 }

@@ -6,6 +6,8 @@ export interface AlignProblem {
   /** Measured mean light and clip time of the frames that have one. */
   light: Float64Array
   times: Float64Array
+  /** Their numbers in the clip. */
+  frames: Int32Array
   exposureSeconds: number
   /** Median interval between frames. */
   frameSeconds: number

@@ -4,7 +4,7 @@ import { polish, type Polished } from './alignPolish'
 import { explained, offsetOf, type AlignProblem, type AlignSolution } from './alignProblem'
 import { beatAmplitude } from './lampTones'
 
-interface FrameRange {
+export interface FrameRange {
   fromFrame: number
   toFrame: number
 }
@@ -17,10 +17,10 @@ interface Spanned {
 const mostCandidates = { complete: 12, sparse: 60 }
 const mostPolished = 24
 /** Longer clips are aligned on a stretch of this length first, which is then doubled up to the whole. */
-const firstSpanSeconds = 60
+export const firstSpanSeconds = 60
 
 /** Frames of a candidate that the record covers. */
-function coveredRange(problem: AlignProblem, offsetSeconds: number): FrameRange {
+export function coveredRange(problem: AlignProblem, offsetSeconds: number): FrameRange {
   const { times, recordSeconds, exposureSeconds } = problem
   let fromFrame = 0
   while (fromFrame < times.length - 1 && times[fromFrame] + offsetSeconds < 0) fromFrame++
@@ -30,7 +30,7 @@ function coveredRange(problem: AlignProblem, offsetSeconds: number): FrameRange 
 }
 
 /** The stretch of at most `seconds` in the range whose light varies most. */
-function liveliestSpan(problem: AlignProblem, range: FrameRange, seconds: number): FrameRange {
+export function liveliestSpan(problem: AlignProblem, range: FrameRange, seconds: number): FrameRange {
   const { times, light } = problem
   if (times[range.toFrame - 1] - times[range.fromFrame] <= seconds) return range
   let best = range
@@ -52,7 +52,7 @@ function liveliestSpan(problem: AlignProblem, range: FrameRange, seconds: number
 }
 
 /** Finest step that keeps an eighth of the fastest beating tone's period. */
-function gridStep(problem: AlignProblem): number {
+export function gridStep(problem: AlignProblem): number {
   const fastest = Math.max(0, ...problem.tones.filter(tone => beatAmplitude(tone, problem.exposureSeconds) > 0.001).map(tone => tone.frequencyHz))
   return Math.max(problem.frameSeconds / 400, Math.min(problem.frameSeconds / 20, 1 / (10 * Math.max(fastest, 1))))
 }
@@ -63,14 +63,14 @@ function expand(problem: AlignProblem, candidate: CoarseCandidate, step: number)
   const range = problem.sparse ? covered : liveliestSpan(problem, covered, firstSpanSeconds)
   const pivotSeconds = (problem.times[range.fromFrame] + problem.times[range.toFrame - 1]) / 2
   const middleSeconds = candidate.offsetSeconds + (1 + candidate.driftPpm * 1e-6) * pivotSeconds
-  const halfRangeSeconds = problem.sparse ? 2 * candidate.stepSeconds : Math.max(problem.frameSeconds * 0.6, 2 * candidate.stepSeconds)
-  const drift = problem.sparse ? { driftPpm: candidate.driftPpm, halfRangePpm: candidate.driftStepPpm } : { driftPpm: 0, halfRangePpm: problem.maxDriftPpm }
+  const halfRangeSeconds = Math.max(problem.frameSeconds * 0.6, 2 * candidate.stepSeconds)
+  const drift = { driftPpm: 0, halfRangePpm: problem.maxDriftPpm }
   const area = { ...range, middleSeconds, pivotSeconds, halfRangeSeconds, stepSeconds: step, ...drift }
   return searchGrid(problem, area, 10).map(solution => ({ solution, range }))
 }
 
 /** From a solution on its stretch to one on all covered frames, doubling the stretch; a small grid keeps it in its minimum. */
-function settle(problem: AlignProblem, start: { solution: Polished, range: FrameRange }, step: number): Polished {
+export function settle(problem: AlignProblem, start: { solution: Polished, range: FrameRange }, step: number): Polished {
   let { solution, range } = start
   for (;;) {
     const covered = coveredRange(problem, offsetOf(solution))
@@ -96,7 +96,7 @@ function distance(problem: AlignProblem, a: AlignSolution, b: AlignSolution): nu
 }
 
 /** Best first, those within `apart` of a better one left out. */
-function distinct<T extends { solution: AlignSolution }>(problem: AlignProblem, entries: T[], apart: number): T[] {
+export function distinct<T extends { solution: AlignSolution }>(problem: AlignProblem, entries: T[], apart: number): T[] {
   const kept: T[] = []
   for (const entry of entries.sort((a, b) => explained(problem, b.solution) - explained(problem, a.solution))) {
     if (!kept.some(other => distance(problem, other.solution, entry.solution) < apart)) kept.push(entry)
