@@ -17,6 +17,7 @@ export default defineNuxtConfig({
     // Filled from NUXT_… by scripts/start.ts; server/utils/config.ts refuses to run without them.
     databaseUrl: '',
     dataDir: '',
+    solveWorker: '',
     demo: false,
     demoPassword: '',
     publicUrl: '',

@@ -2,6 +2,7 @@ declare module 'nuxt/schema' {
   interface RuntimeConfig {
     databaseUrl: string
     dataDir: string
+    solveWorker: string
     demo: boolean
     demoPassword: string
     publicUrl: string

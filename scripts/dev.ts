@@ -19,7 +19,7 @@ run(async () => {
   const runner = supervise('runner', join(projectRoot, '.output-dev', String(settings.port), 'runner.mjs'), runnerEnvironment(settings, foundation), join(settings.dataDir, 'logs', 'runner.log'))
   console.log(`Demo password: ${foundation.secrets.demoPassword} (technician@, analyst@, operator@, admin@, guest@demo.lampsum.example)`)
   const web = spawn(process.execPath, [join(projectRoot, 'node_modules', 'nuxt', 'bin', 'nuxt.mjs'), 'dev', '--port', String(settings.port), '--host', settings.host], {
-    cwd: projectRoot, stdio: 'inherit', env: { ...webEnvironment(settings, foundation), NODE_ENV: 'development', NUXT_TELEMETRY_DISABLED: '1' },
+    cwd: projectRoot, stdio: 'inherit', env: { ...webEnvironment(settings, foundation), NUXT_SOLVE_WORKER: join(projectRoot, '.output-dev', String(settings.port), 'solveWorker.mjs'), NODE_ENV: 'development', NUXT_TELEMETRY_DISABLED: '1' },
   })
   let stopped = false
   const stop = async () => {

@@ -103,6 +103,7 @@ export const routes = {
   'GET /api/frame-sets/:id/files/:name': route({ permission: 'frameSet.read', scope: 'frameSet', summary: 'A file of the set; Range, If-None-Match, ETag, Repr-Digest', raw: 'application/octet-stream' }),
   'HEAD /api/frame-sets/:id/files/:name': route({ permission: 'frameSet.read', scope: 'frameSet', summary: 'Size and digest of a file', raw: 'application/octet-stream' }),
   'GET /api/frame-sets/:id/images/:name': route({ permission: 'frameSet.read', scope: 'frameSet', summary: 'One image as raw little-endian values, row-major; :name is scene, p, q, noise or a group id; X-Lampsum-Shape is rows,columns and X-Lampsum-Type uint32 (sums) or float32', raw: 'application/octet-stream' }),
+  'POST /api/frame-sets/:id/solve': route({ permission: 'frameSet.solve', scope: 'frameSet', summary: 'Solve a draft again from its stored sums, with these repetitions left out; all are accepted with an empty list, and none is changed without one', body: results.solveSchema, response: results.frameSetSchema }),
   'POST /api/frame-sets/:id/release': route({ permission: 'frameSet.release', scope: 'frameSet', summary: 'Release to guests, with a note', body: results.releaseSchema, response: okSchema }),
 
   // the whole

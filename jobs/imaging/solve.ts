@@ -42,6 +42,32 @@ export class SolveError extends Error {
   }
 }
 
+/** What is known of a line before a pixel is read: the same for every pixel, band and thread. */
+export interface SolvePlan {
+  /** Indices of the accepted groups, ascending; rows of `matrix`, columns of `inverse`. */
+  used: number[]
+  /** 3, or 4 with an ambient term. */
+  columns: number
+  /** [U, columns] row-major: A, C, S[, N]. */
+  matrix: Float64Array
+  /** [columns, U] row-major. */
+  inverse: Float64Array
+  degreesOfFreedom: number
+  conditionNumber: number
+  /** [columns, columns] row-major. */
+  covariance: Float64Array
+}
+
+/** Images of some neighbouring pixels, all of the same length. */
+export interface BandImages {
+  scene: Float32Array
+  p: Float32Array
+  q: Float32Array
+  noise: Float32Array
+  /** Left out when nobody needs it. */
+  ambient?: Float32Array
+}
+
 /** Beyond this, p and q are noise: a lamp modulated by less than about a hundredth, or two phases that are nearly one. */
 const largestConditionNumber = 1000
 const blockPixels = 4096
@@ -58,25 +84,41 @@ const blockPixels = 4096
  * Source: the exposure as Fourier integral, written as a linear model with measured coefficients; ordinary least squares.
  */
 export function solveFrameSet(input: FrameSetInput): FrameSetSolution {
-  const { sums, roles, width, height, accepted } = input
+  const { sums, roles, width, height } = input
   const pixels = width * height
-  if (roles.length !== sums.length || input.frames.length !== sums.length || input.integrals.length !== 3 * sums.length) throw new RangeError('Sums, roles, frames and integrals must be of the same groups.')
+  if (roles.length !== sums.length) throw new RangeError('Sums, roles, frames and integrals must be of the same groups.')
   if (sums.some(sum => sum.length !== pixels)) throw new RangeError(`Every sum must have ${width}×${height} pixels.`)
+  const plan = planSolution(input)
+  const image = () => new Float32Array(pixels)
+  const images = { scene: image(), p: image(), q: image(), noise: image(), ...plan.columns === 4 ? { ambient: image() } : {} }
+  const squares = solveBand(plan, plan.used.map(g => sums[g]), images)
+  return { ...images, ambient: images.ambient ?? null, degreesOfFreedom: plan.degreesOfFreedom, conditionNumber: plan.conditionNumber, covariance: plan.covariance, residualRms: residualRmsOf(plan, squares, pixels, sums.length) }
+}
+
+/**
+ * The part of the solution that all pixels share.
+ *
+ * @throws SolveError when groups are missing or their integrals do not differ enough; RangeError when lengths disagree
+ */
+export function planSolution(input: Omit<FrameSetInput, 'sums' | 'width' | 'height'>): SolvePlan {
+  const { roles, accepted } = input
+  if (input.frames.length !== roles.length || input.integrals.length !== 3 * roles.length) throw new RangeError('Sums, roles, frames and integrals must be of the same groups.')
   const used = roles.flatMap((_, g) => accepted === undefined || accepted[g] ? [g] : [])
   const { matrix, columns } = designMatrix(input, used)
   const conditionNumber = assertSolvable(input, used)
   const solved = pseudoInverse(matrix, used.length, columns)
   if (!solved) throw new SolveError('ill-conditioned', 'The groups do not tell scene and ambient light apart. Leave the dark groups out, or add lit groups.')
-  const images = Array.from({ length: columns }, () => new Float32Array(pixels))
-  const degreesOfFreedom = used.length - columns
-  const noise = new Float32Array(pixels)
-  const squares = solvePixels(used.map(g => sums[g]), matrix, solved.inverse, images, noise, degreesOfFreedom)
-  const residualRms = new Float64Array(sums.length).fill(Number.NaN)
-  if (degreesOfFreedom > 0) used.forEach((g, row) => residualRms[g] = Math.sqrt(squares[row] / pixels / (1 - leverage(matrix, solved.inverse, row, columns))))
-  return { scene: images[0], p: images[1], q: images[2], ambient: images[3] ?? null, noise, degreesOfFreedom, conditionNumber, covariance: gram(solved.inverse, columns), residualRms }
+  return { used, columns, matrix, inverse: solved.inverse, degreesOfFreedom: used.length - columns, conditionNumber, covariance: gram(solved.inverse, columns) }
 }
 
-function designMatrix({ roles, integrals, frames }: FrameSetInput, used: number[]): { matrix: Float64Array, columns: number } {
+/** rms over the pixels of each group's residual / √(1 − leverage), from the sums of squares of all bands; NaN where not accepted. */
+export function residualRmsOf({ used, matrix, inverse, columns, degreesOfFreedom }: SolvePlan, squares: ArrayLike<number>, pixels: number, groupCount: number): Float64Array {
+  const residualRms = new Float64Array(groupCount).fill(Number.NaN)
+  if (degreesOfFreedom > 0) used.forEach((g, row) => residualRms[g] = Math.sqrt(squares[row] / pixels / (1 - leverage(matrix, inverse, row, columns))))
+  return residualRms
+}
+
+function designMatrix({ roles, integrals, frames }: Omit<FrameSetInput, 'sums' | 'width' | 'height'>, used: number[]): { matrix: Float64Array, columns: number } {
   const columns = used.some(g => roles[g] === 'dark') ? 4 : 3
   const matrix = new Float64Array(used.length * columns)
   used.forEach((g, row) => {
@@ -88,7 +130,7 @@ function designMatrix({ roles, integrals, frames }: FrameSetInput, used: number[
 }
 
 /** @returns condition number of the lit groups' [A, C, S] */
-function assertSolvable({ roles, integrals }: FrameSetInput, used: number[]): number {
+function assertSolvable({ roles, integrals }: Omit<FrameSetInput, 'sums' | 'width' | 'height'>, used: number[]): number {
   const lit = used.filter(g => roles[g] !== 'dark')
   const phases = lit.filter(g => roles[g] === 'phase').length
   if (phases < 2 || lit.length < 3) throw new SolveError('too-few-groups', `A line needs a reference and at least two phase groups; ${lit.length - phases} and ${phases} are accepted. Accept more groups or shoot the missing ones.`)
@@ -98,39 +140,71 @@ function assertSolvable({ roles, integrals }: FrameSetInput, used: number[]): nu
   return conditionNumber
 }
 
-/** @returns Σ over the pixels of each group's squared residual */
-function solvePixels(sums: Uint32Array[], matrix: Float64Array, inverse: Float64Array, images: Float32Array[], noise: Float32Array, degreesOfFreedom: number): Float64Array {
-  const groups = sums.length
-  const columns = images.length
-  const squares = new Float64Array(groups)
-  const block = images.map(() => new Float64Array(blockPixels))
+/**
+ * Solve neighbouring pixels. Every pixel stands for itself, so a picture solved in bands, in any order and by any number
+ * of threads, has the same bits as one solved at once.
+ *
+ * @param sums of the plan's used groups, each as long as the images
+ * @param images written in place; `noise` becomes NaN without degrees of freedom
+ * @returns Σ over these pixels of each used group's squared residual; add the bands' up in the order of the bands
+ */
+export function solveBand(plan: SolvePlan, sums: readonly Uint32Array[], images: BandImages): Float64Array {
+  const { columns, degreesOfFreedom } = plan
+  const pixels = images.noise.length
+  const squares = new Float64Array(sums.length)
+  const [weights, rows] = [weightsOf(plan), rowsOf(plan)]
+  const block = new Float64Array(4 * blockPixels)
   const variance = new Float64Array(blockPixels)
-  for (let from = 0; from < noise.length; from += blockPixels) {
-    const length = Math.min(blockPixels, noise.length - from)
-    block.forEach(values => values.fill(0))
+  const targets = [images.scene, images.p, images.q, images.ambient].slice(0, columns)
+  for (let from = 0; from < pixels; from += blockPixels) {
+    const length = Math.min(blockPixels, pixels - from)
+    block.fill(0)
     variance.fill(0)
-    for (let k = 0; k < columns; k++) {
-      for (let g = 0; g < groups; g++) addScaled(block[k], sums[g], from, length, inverse[k * groups + g])
-      images[k].set(block[k].subarray(0, length), from)
-    }
-    for (let g = 0; g < groups; g++) squares[g] += addResiduals(variance, sums[g], from, length, block, matrix.subarray(g * columns, (g + 1) * columns))
-    for (let i = 0; i < length; i++) noise[from + i] = degreesOfFreedom > 0 ? Math.sqrt(variance[i] / degreesOfFreedom) : Number.NaN
+    for (let g = 0; g < sums.length; g += 2) addPair(block, sums[g], sums[g + 1] ?? sums[g], from, length, weights, 4 * g)
+    targets.forEach((image, k) => image?.set(block.subarray(k * blockPixels, k * blockPixels + length), from))
+    if (degreesOfFreedom > 0) for (let g = 0; g < sums.length; g++) squares[g] += addResiduals(variance, sums[g], from, length, block, rows, 4 * g)
+    for (let i = 0; i < length; i++) images.noise[from + i] = degreesOfFreedom > 0 ? Math.sqrt(variance[i] / degreesOfFreedom) : Number.NaN
   }
   return squares
 }
 
-function addScaled(target: Float64Array, source: Uint32Array, from: number, length: number, factor: number): void {
-  for (let i = 0; i < length; i++) target[i] += factor * source[from + i]
+/** Four weights a group: of s, p, q and the ambient term, 0 without one; a group of zeros ends an odd number. */
+function weightsOf({ inverse, columns, used }: SolvePlan): Float64Array {
+  const weights = new Float64Array(4 * (used.length + 1))
+  for (let g = 0; g < used.length; g++) for (let k = 0; k < columns; k++) weights[4 * g + k] = inverse[k * used.length + g]
+  return weights
+}
+
+/** Four coefficients a group: A, C, S, N, the last 0 without an ambient term. */
+function rowsOf({ matrix, columns, used }: SolvePlan): Float64Array {
+  const rows = new Float64Array(4 * used.length)
+  for (let g = 0; g < used.length; g++) for (let k = 0; k < columns; k++) rows[4 * g + k] = matrix[columns * g + k]
+  return rows
+}
+
+/**
+ * Adds two groups' sums, weighted, to the block of four images: each accumulator is read and written once for both. Only
+ * typed arrays and numbers come in, so that a fresh thread's compiler is done with it once.
+ */
+function addPair(block: Float64Array, first: Uint32Array, second: Uint32Array, from: number, length: number, weights: Float64Array, at: number): void {
+  const [s1, p1, q1, d1] = [weights[at], weights[at + 1], weights[at + 2], weights[at + 3]]
+  const [s2, p2, q2, d2] = [weights[at + 4], weights[at + 5], weights[at + 6], weights[at + 7]]
+  for (let i = 0; i < length; i++) {
+    const a = first[from + i]
+    const b = second[from + i]
+    block[i] = block[i] + s1 * a + s2 * b
+    block[blockPixels + i] = block[blockPixels + i] + p1 * a + p2 * b
+    block[2 * blockPixels + i] = block[2 * blockPixels + i] + q1 * a + q2 * b
+    block[3 * blockPixels + i] = block[3 * blockPixels + i] + d1 * a + d2 * b
+  }
 }
 
 /** Adds the squared residuals of one group to each pixel's; returns their sum. */
-function addResiduals(variance: Float64Array, source: Uint32Array, from: number, length: number, [s, p, q, d]: Float64Array[], row: Float64Array): number {
-  const [a, c, b] = row
-  const n = d ? row[3] : 0
-  const ambient = d ?? s
+function addResiduals(variance: Float64Array, source: Uint32Array, from: number, length: number, block: Float64Array, rows: Float64Array, at: number): number {
+  const [a, c, b, n] = [rows[at], rows[at + 1], rows[at + 2], rows[at + 3]]
   let total = 0
   for (let i = 0; i < length; i++) {
-    const residual = source[from + i] - a * s[i] - c * p[i] - b * q[i] - n * ambient[i]
+    const residual = source[from + i] - a * block[i] - c * block[blockPixels + i] - b * block[2 * blockPixels + i] - n * block[3 * blockPixels + i]
     variance[i] += residual * residual
     total += residual * residual
   }

@@ -1,13 +1,13 @@
 import { createHash } from 'node:crypto'
-import { and, desc, eq } from 'drizzle-orm'
+import { and, desc, eq, isNull } from 'drizzle-orm'
 import type { Database, Transaction } from '../../server/db/client'
-import { acquisitions, alignments, cutLists, jobs, stageOutputs, uploads } from '../../server/db/schema'
+import { acquisitions, alignments, cutLists, frameSets, jobs, stageOutputs, uploads } from '../../server/db/schema'
 import { LampsumError } from '../../shared/errors'
 import type { FactsOf } from '../../shared/stageOutputs'
 import { pipeline, pipelineStages, type PipelineStage } from '../../shared/states'
 
 /** Raise a stage's number when its results change, and every acquisition's stage counts as stale. */
-export const stageVersions: Record<PipelineStage, number> = { inspect: 1, meter: 1, record: 1, align: 1, cut: 1, sum: 1, check: 1 }
+export const stageVersions: Record<PipelineStage, number> = { inspect: 2, meter: 2, record: 1, align: 2, cut: 2, sum: 2, check: 2 }
 
 export type StageOutput = typeof stageOutputs.$inferSelect
 export type AcquisitionRow = typeof acquisitions.$inferSelect
@@ -25,6 +25,8 @@ export interface Situation {
   manualAlignment: typeof alignments.$inferSelect | null
   newestCutList: typeof cutLists.$inferSelect | null
   manualCutList: typeof cutLists.$inferSelect | null
+  /** Frame sets that nothing newer has replaced. */
+  frameSets: Pick<typeof frameSets.$inferSelect, 'id' | 'line' | 'review'>[]
 }
 
 export const keyOf = (value: unknown) => createHash('sha256').update(JSON.stringify(value)).digest('hex')
@@ -38,6 +40,7 @@ export async function loadSituation(database: Database | Transaction, acquisitio
   const jobRows = await database.select().from(jobs).where(eq(jobs.acquisitionId, acquisitionId)).orderBy(desc(jobs.createdAt), desc(jobs.id))
   const [alignment] = await database.select().from(alignments).where(and(eq(alignments.acquisitionId, acquisitionId), eq(alignments.method, 'manual'), eq(alignments.accepted, true))).orderBy(desc(alignments.version)).limit(1)
   const [cutList] = await database.select().from(cutLists).where(eq(cutLists.acquisitionId, acquisitionId)).orderBy(desc(cutLists.version)).limit(1)
+  const sets = await database.select({ id: frameSets.id, line: frameSets.line, review: frameSets.review }).from(frameSets).where(and(eq(frameSets.acquisitionId, acquisitionId), isNull(frameSets.supersededAt)))
   const latest: Situation['latestJobs'] = {}
   for (const job of jobRows) if (job.stage !== 'verify') latest[job.stage] ??= job
   return {
@@ -49,6 +52,7 @@ export async function loadSituation(database: Database | Transaction, acquisitio
     manualAlignment: alignment ?? null,
     newestCutList: cutList ?? null,
     manualCutList: cutList?.authorId ? cutList : null,
+    frameSets: sets,
   }
 }
 

@@ -1,16 +1,19 @@
 import { createHash } from 'node:crypto'
-import { createWriteStream } from 'node:fs'
-import { readFile, stat, writeFile } from 'node:fs/promises'
+import { writeFile } from 'node:fs/promises'
 import { join } from 'node:path'
-import { Readable } from 'node:stream'
-import { pipeline } from 'node:stream/promises'
 import type { CheckResult } from '../../shared/checks'
 import type { Group, GroupRole } from '../../shared/measurement'
+import type { Rejection } from '../../shared/schemas/results'
 import type { NpyArray } from '../formats/npy'
-import { npzChunks, type LazyNpyArray } from '../formats/npz'
-import type { FrameSetSolution } from '../imaging/solve'
+import { inOrder, lineChecks } from '../imaging/checks'
+import { medianOf } from '../imaging/median'
+import { planSolution, type SolvePlan } from '../imaging/solve'
 import { ffmpegVersion } from '../media/version'
 import type { Provenance } from './provenance'
+import { writeSetFile } from './solveFile'
+import type { SolvePool } from './solvePool'
+import { sampleRows } from './solveSamples'
+import type { SolvedOffsets, SumSource } from './solveTasks'
 
 export interface SetFile {
   name: string
@@ -26,44 +29,106 @@ export interface FrameSetContent {
   line: number
   frequencyHz: number
   groups: Group[]
-  sums: Uint32Array[]
+  /** Sums of each group, and the checksum of them all (`digestSums`). */
+  sources: SumSource[]
+  sumsCrc: number
   integrals: Float64Array
-  solution: FrameSetSolution
   width: number
   height: number
-  force: [number, number] | null
+  /** Complex amplitude of the force over each group's exposures; null where it was not measured. */
+  forces: ([number, number] | null)[]
+  /** Of the repetitions; those of the line come from the solution. */
   checks: CheckResult[]
-  provenance: Provenance
+  rejections: Rejection[]
+  /** What the manifest says besides: see `manifestBase`, or the manifest of the set that is solved again. */
+  manifest: Record<string, unknown>
+}
+
+export interface WrittenSet {
+  files: SetFile[]
+  /** With those of the line. */
+  checks: CheckResult[]
 }
 
 const roleCodes: Record<GroupRole, number> = { dark: 0, reference: 1, phase: 2 }
+/** Parts of a picture that are handed to threads; where they end changes no bit. */
+const parts = 8
 
-/** Writes `frameset.npz` and `manifest.json` of one line; the same content gives the same bytes. */
-export async function writeFrameSet(folder: string, content: FrameSetContent): Promise<SetFile[]> {
-  const npz = join(folder, `line-${content.line}-frameset.npz`)
-  await pipeline(Readable.from(npzChunks(arraysOf(content)), { objectMode: true }), createWriteStream(npz))
-  const set = await describeFile('frameset.npz', npz, content.line, 'application/zip')
-  const { line, frequencyHz, groups, checks, provenance, force } = content
-  const manifest = join(folder, `line-${line}-manifest.json`)
-  await writeFile(manifest, `${JSON.stringify({
+/**
+ * Solves a line and writes its `frameset.npz` and `manifest.json`; the same content gives the same bytes.
+ *
+ * @throws SolveError before anything is written, when the accepted groups cannot be solved
+ */
+export async function writeFrameSet(folder: string, content: FrameSetContent, pool: SolvePool): Promise<WrittenSet> {
+  const { line, groups, width, height, sources } = content
+  const plan = planSolution({ roles: groups.map(group => group.role), integrals: content.integrals, frames: groups.map(group => group.frameCount), accepted: groups.map(group => group.accepted) })
+  const force = forceOf(groups, content.forces)
+  const path = join(folder, `line-${line}-frameset.npz`)
+  let noiseAt = 0
+  const written = await writeSetFile(path, { sums: { shape: [groups.length, height, width], sources, crc: content.sumsCrc }, small: smallArrays(content, force) }, (offsets) => {
+    noiseAt = offsets.noise
+    return solveBands(plan, sources, { width, height, path, offsets }, pool)
+  })
+  const checks = inOrder(content.checks, lineChecks(plan.conditionNumber, noiseShare(plan, groups, sources, { path, offset: noiseAt }, width, height)))
+  const set: SetFile = { name: 'frameset.npz', storeName: `line-${line}-frameset.npz`, path, ...written, contentType: 'application/zip' }
+  return { files: [set, await writeManifest(folder, content, force, checks, set)], checks }
+}
+
+/** The manifest's part that stays when the set is solved again. */
+export async function manifestBase(line: number, frequencyHz: number, provenance: Provenance, forces: FrameSetContent['forces'], sumsSha256: string[]): Promise<Record<string, unknown>> {
+  return {
     format: 'lampsum-frame-set', formatVersion: 1, line, frequencyHz, ...provenance, decoder: await ffmpegVersion(),
     conventions: {
       sums: 'per pixel, sum over the group\'s frames of round(50000·E); E is linear light, 1 at nominal white',
       lampPhaseDeg: 'φ of the lamp signal L = mean·(1 + depth·sin(ωt + φ)), t from the record\'s first sample',
       integrals: 'A, C, S: sums over frames of the mean over the exposure of L, L·cos ωt, L·sin ωt, dark level subtracted, in record units',
-      force: 'F of f(t) = Re{F exp(jωt)}, real and imaginary part, in record units',
+      force: 'F of f(t) = Re{F exp(jωt)}, real and imaginary part, in record units; of the set: mean over the accepted lit groups, weighted by frames',
     },
-    force, groups, checks, files: [{ name: set.name, bytes: set.bytes, sha256: set.sha256 }],
-  }, null, 2)}\n`)
-  return [set, await describeFile('manifest.json', manifest, line, 'application/json')]
+    sumsSha256, forces,
+  }
 }
 
-function arraysOf({ groups, sums, integrals, solution, width, height, frequencyHz, force }: FrameSetContent): Record<string, NpyArray | LazyNpyArray> {
+async function writeManifest(folder: string, { line, groups, rejections, manifest }: FrameSetContent, force: [number, number] | null, checks: CheckResult[], set: SetFile): Promise<SetFile> {
+  const path = join(folder, `line-${line}-manifest.json`)
+  const text = `${JSON.stringify({ ...manifest, force, groups, rejections: rejections.map(({ repetition, by, reason }) => ({ repetition, by, reason })), checks, files: [{ name: set.name, bytes: set.bytes, sha256: set.sha256 }] }, null, 2)}\n`
+  await writeFile(path, text)
+  return { name: 'manifest.json', storeName: `line-${line}-manifest.json`, path, bytes: Buffer.byteLength(text), sha256: createHash('sha256').update(text).digest('hex'), contentType: 'application/json' }
+}
+
+async function solveBands(plan: SolvePlan, sources: SumSource[], { width, height, path, offsets }: { width: number, height: number, path: string, offsets: SolvedOffsets }, pool: SolvePool): Promise<void> {
+  const used = plan.used.map(g => sources[g]!)
+  const step = Math.max(4096, Math.ceil(width * height / parts))
+  const bands: Promise<null>[] = []
+  for (let firstPixel = 0; firstPixel < width * height; firstPixel += step) bands.push(pool.run({ kind: 'band', plan, sources: used, firstPixel, pixels: Math.min(step, width * height - firstPixel), target: { path, offsets } }))
+  await Promise.all(bands)
+}
+
+/** Median noise of a sum over the median sum; null when the groups leave no freedom to see it. */
+function noiseShare(plan: SolvePlan, groups: Group[], sources: SumSource[], noise: SumSource, width: number, height: number): number | null {
+  const lit = groups.findIndex(group => group.role !== 'dark' && group.frameCount > 0)
+  const level = medianOf(sampleRows(sources[lit]!, width, height))
+  if (plan.degreesOfFreedom < 1 || !(level > 0)) return null
+  return medianOf(new Float32Array(sampleRows(noise, width, height).buffer)) / level
+}
+
+/** Mean over the accepted lit groups, weighted by their frames; null when the force was not recorded. */
+function forceOf(groups: readonly Group[], forces: FrameSetContent['forces']): [number, number] | null {
+  if (forces.every(force => force === null)) return null
+  const total = [0, 0, 0]
+  groups.forEach(({ accepted, role, frameCount }, g) => {
+    const force = forces[g]
+    if (!accepted || role === 'dark' || !force) return
+    total[0]! += force[0] * frameCount
+    total[1]! += force[1] * frameCount
+    total[2]! += frameCount
+  })
+  return total[2] ? [total[0]! / total[2], total[1]! / total[2]] : null
+}
+
+function smallArrays({ groups, integrals, frequencyHz, forces }: FrameSetContent, force: [number, number] | null): Record<string, NpyArray> {
   const count = groups.length
   const ints = (value: (group: Group) => number): NpyArray => ({ dtype: 'int32', shape: [count], data: Int32Array.from(groups, value) })
-  const image = (data: Float32Array): NpyArray => ({ dtype: 'float32', shape: [height, width], data })
   return {
-    sums: { dtype: 'uint32', shape: [count, height, width], chunks: () => sums.map(sum => new Uint8Array(sum.buffer, sum.byteOffset, sum.byteLength)) },
     frames: ints(group => group.frameCount),
     first_frame: ints(group => group.firstFrame),
     repetition: ints(group => group.repetition),
@@ -72,15 +137,6 @@ function arraysOf({ groups, sums, integrals, solution, width, height, frequencyH
     accepted: { dtype: 'uint8', shape: [count], data: Uint8Array.from(groups, group => Number(group.accepted)) },
     integrals: { dtype: 'float64', shape: [count, 3], data: integrals },
     frequency_hz: { dtype: 'float64', shape: [], data: Float64Array.of(frequencyHz) },
-    ...(force ? { force: { dtype: 'complex128' as const, shape: [], data: Float64Array.of(...force) } } : {}),
-    scene: image(solution.scene),
-    p: image(solution.p),
-    q: image(solution.q),
-    noise: image(solution.noise),
+    ...(forces.some(each => each !== null) ? { force: { dtype: 'complex128' as const, shape: [], data: Float64Array.of(...force ?? [NaN, NaN]) } } : {}),
   }
-}
-
-async function describeFile(name: string, path: string, line: number, contentType: string): Promise<SetFile> {
-  const sha256 = createHash('sha256').update(await readFile(path)).digest('hex')
-  return { name, storeName: `line-${line}-${name}`, path, bytes: (await stat(path)).size, sha256, contentType }
 }

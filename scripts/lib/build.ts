@@ -8,6 +8,8 @@ import { projectRoot, StartError } from './settings'
 export const outputDir = join(projectRoot, process.env.LAMPSUM_OUTPUT_DIR || '.output')
 export const webEntry = join(outputDir, 'server', 'index.mjs')
 export const runnerEntry = join(outputDir, 'runner', 'runner.mjs')
+/** Solves frame sets again, in a thread of the web server. */
+export const solveWorkerEntry = join(outputDir, 'runner', 'solveWorker.mjs')
 
 const sources = ['app.vue', 'error.vue', 'nuxt.config.ts', 'tailwind.config.ts', 'package-lock.json', 'assets', 'components', 'composables', 'jobs', 'layouts', 'middleware', 'pages', 'plugins', 'public', 'server', 'shared', 'stores']
 
@@ -45,7 +47,7 @@ export async function buildIfStale(): Promise<boolean> {
 /** The runner and its worker threads, each one file; sharp stays outside because it carries a native part. */
 export async function bundleRunner(folder: string): Promise<void> {
   await build({
-    entryPoints: { runner: join(projectRoot, 'jobs', 'runner.ts'), stageWorker: join(projectRoot, 'jobs', 'stageWorker.ts') },
+    entryPoints: { runner: join(projectRoot, 'jobs', 'runner.ts'), stageWorker: join(projectRoot, 'jobs', 'stageWorker.ts'), solveWorker: join(projectRoot, 'jobs', 'stages', 'solveWorker.ts') },
     outdir: folder,
     outExtension: { '.js': '.mjs' },
     bundle: true,

@@ -4,6 +4,7 @@ import { createServer } from 'node:net'
 import { join } from 'node:path'
 import { openDatabase } from '../../server/db/client'
 import { migrateDatabase } from '../../server/db/migrate'
+import { solveWorkerEntry } from './build'
 import { startMariaDb, type MariaDb } from './mariadb'
 import { dataDirError, prepareDataDir, projectRoot, readSecrets, StartError, type Secrets, type Settings } from './settings'
 
@@ -82,6 +83,7 @@ export function webEnvironment(settings: Settings, foundation: Foundation): Node
     NUXT_DATA_DIR: settings.dataDir,
     NUXT_DEMO: String(settings.demo),
     NUXT_DEMO_PASSWORD: foundation.secrets.demoPassword,
+    NUXT_SOLVE_WORKER: solveWorkerEntry,
     NUXT_PUBLIC_URL: settings.publicUrl,
     NUXT_SMTP_URL: process.env.LAMPSUM_SMTP_URL || '',
     NUXT_ADMIN_EMAIL: settings.adminEmail,

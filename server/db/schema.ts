@@ -8,6 +8,7 @@ import type { Role } from '../../shared/permissions'
 import type { FrameSetState, JobState, PipelineStage, Stage, UploadState } from '../../shared/states'
 import type { CheckResult } from '../../shared/checks'
 import type { ChannelMapping } from '../../shared/records'
+import type { FrameSetReview } from '../../shared/frameSetReview'
 import type { EventType } from '../../shared/events'
 
 /** MariaDB's JSON is LONGTEXT: the driver hands back a string, so parse it here. */
@@ -238,6 +239,8 @@ export const frameSets = mysqlTable('frame_sets', {
   cutListVersion: int('cut_list_version').notNull(),
   checks: json<CheckResult[]>('checks').notNull(),
   groups: json<Group[]>('set_groups').notNull(),
+  /** What went into it, and who decided what; null on sets from before this was kept. */
+  review: json<FrameSetReview>('review'),
   width: int('width').notNull(),
   height: int('height').notNull(),
   /** Set when a newer run has taken its place; kept so that a link in a report still resolves. */

@@ -48,6 +48,7 @@ export async function loadSituations(database: Database, rows: AcquisitionRow[])
       manualAlignment: alignmentsOf.get(acquisition.id)?.[0] ?? null,
       newestCutList: cutList,
       manualCutList: cutList?.authorId ? cutList : null,
+      frameSets: [],
     }
     return [acquisition.id, { situation, uploads: ownUploads, proofs }]
   }))

@@ -49,6 +49,7 @@ async function withFiles(database: Database, rows: JoinedSet[]): Promise<FrameSe
     id: set.id, acquisitionId: set.acquisitionId, acquisitionNumber, acquisitionTitle, campaignId, campaignName,
     line: set.line, frequencyHz: set.frequencyHz, state: set.state, superseded: set.supersededAt !== null, cutListVersion: set.cutListVersion,
     width: set.width, height: set.height, millimetresPerPixel, checks: set.checks, groups: set.groups,
+    rejections: set.review?.rejections ?? [], history: set.review?.history ?? [],
     files: files.filter(file => file.frameSetId === set.id).map(({ name, bytes, sha256 }) => ({ name, bytes, sha256 })),
     releasedByName, releasedAt: set.releasedAt?.toISOString() ?? null, releaseNote: set.releaseNote, createdAt: set.createdAt.toISOString(),
   }))

@@ -27,12 +27,21 @@ export type QueueStatus = z.infer<typeof queueStatusSchema>
 
 export const checkResultSchema = z.object({ checkId: z.string(), repetition: z.number().int().nullable(), value: z.number().nullable(), unit: z.string(), limit: z.number().nullable(), passed: z.boolean(), message: z.string() })
 
+/** A repetition that is left out; `by` is a person's name or `program`. */
+export const rejectionSchema = z.object({ repetition: z.number().int(), by: z.string(), byId: idSchema.nullable(), reason: z.string() })
+export type Rejection = z.infer<typeof rejectionSchema>
+/** Every time a person solved the set again: who, when, and what was left out from then on. */
+export const solveHistorySchema = z.object({ at: timeSchema, byName: z.string(), byId: idSchema, rejected: z.array(z.number().int()) })
+export type SolveHistory = z.infer<typeof solveHistorySchema>
+export const solveSchema = z.object({ reject: z.array(z.number().int().min(0, 'Repetitions count from 1.')).max(1000).optional() })
+
 export const frameSetSchema = z.object({
   id: idSchema, acquisitionId: idSchema, acquisitionNumber: z.number().int(), acquisitionTitle: z.string(), campaignId: idSchema, campaignName: z.string(),
   line: z.number().int(), frequencyHz: z.number(), state: z.enum(['draft', 'released']), superseded: z.boolean(), cutListVersion: z.number().int(),
   width: z.number().int(), height: z.number().int(), millimetresPerPixel: z.number().nullable(),
   checks: z.array(checkResultSchema), groups: z.array(groupSchema),
   files: z.array(z.object({ name: z.string(), bytes: z.number(), sha256: z.string() })),
+  rejections: z.array(rejectionSchema), history: z.array(solveHistorySchema),
   releasedByName: z.string().nullable(), releasedAt: timeSchema.nullable(), releaseNote: z.string().nullable(), createdAt: timeSchema,
 })
 export type FrameSet = z.infer<typeof frameSetSchema>
@@ -45,7 +54,7 @@ export const cutListPutSchema = z.object({ groups: z.array(groupSchema).min(1, '
 
 /** Columns ≤ frames; each column is the mean of the frames in it. `predicted` is null before alignment. */
 export const lightQuerySchema = z.object({ from: z.coerce.number().int().min(0).optional(), to: z.coerce.number().int().min(0).optional(), columns: z.coerce.number().int().min(1).max(4000).default(1000) })
-export const lightSchema = z.object({ frames: z.array(z.number()), measured: z.array(z.number()), predicted: z.array(z.number().nullable()).nullable() })
+export const lightSchema = z.object({ frames: z.array(z.number()), measured: z.array(z.number().nullable()), predicted: z.array(z.number().nullable()).nullable() })
 export type Light = z.infer<typeof lightSchema>
 
 export const channelQuerySchema = z.object({ from: z.coerce.number().optional(), to: z.coerce.number().optional(), columns: z.coerce.number().int().min(1).max(4000).default(1000) })

@@ -1,0 +1,1 @@
+ALTER TABLE `frame_sets` ADD COLUMN IF NOT EXISTS `review` longtext;
