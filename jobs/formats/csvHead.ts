@@ -13,6 +13,9 @@ export interface CsvHead {
   bytes: Uint8Array
   /** Whole lines among them. */
   lines: string[]
+  /** Bytes of the whole lines; all of the file when `isWhole`. */
+  lineBytes: number
+  isWhole: boolean
 }
 
 /** Read the beginning of a text record in UTF-8 or Latin-1. @throws RecordError `empty`, `no-data`, `ambiguous-delimiter` */
@@ -30,7 +33,7 @@ export async function readCsvHead(source: AsyncIterator<Uint8Array>): Promise<Cs
   const lines = decode(bytes.subarray(0, whole)).split(/\r?\n/)
   if (!ended) lines.pop()
   const layout = findCsvLayout(lines)
-  return { layout, bytes, lines, columns: columnsOf(layout) }
+  return { layout, bytes, lines, columns: columnsOf(layout), lineBytes: whole, isWhole: ended }
 }
 
 function columnsOf({ columnCount, headers, names, units }: CsvLayout): RecordColumn[] {

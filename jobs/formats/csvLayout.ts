@@ -19,6 +19,9 @@ export interface CsvLayout {
 
 export const blanks = ' '
 export const delimiters = ['\t', ';', ',', '|', blanks]
+export const delimiterNames: Record<string, string> = { '\t': 'tabs', ';': 'semicolons', ',': 'commas', '|': 'bars', [blanks]: 'blanks', '': 'nothing' }
+/** What loggers write where an input was overloaded. */
+export const overload = /^"?[-+]?\s*(?:ovl|ovld|ol|ovr|over(?:load|flow|range)?|1\.?#inf\w*|inf(?:inity)?|∞|clip(?:ped)?)"?$/i
 const quote = 60
 
 /**
@@ -34,12 +37,20 @@ export function findCsvLayout(lines: readonly string[]): CsvLayout {
     const headerLines = firstDataLine(lines, delimiter)
     const preamble = lines.slice(0, headerLines)
     if (headerLines < 0 || isDecimalComma(preamble, delimiter)) continue
-    const columnCount = splitData(lines[headerLines], delimiter).length
+    const columnCount = countColumns(lines[headerLines], preamble, delimiter)
     assertClear(preamble, delimiter, columnCount, headerLines)
     return { delimiter, columnCount, headerLines, ...readHeader(preamble, delimiter, columnCount), sampleRateHz: statedRate(preamble) }
   }
   const shown = lines.find(line => line.trim()) ?? ''
   throw new RecordError('no-data', `No rows of numbers were found; the first line reads “${shown.slice(0, quote)}”. Export the record as CSV or TSV with one row a sample; a time column must hold seconds, not clock times.`)
+}
+
+/** A delimiter at the end of rows opens no column, unless the header has a name for it. */
+function countColumns(row: string, preamble: readonly string[], delimiter: string): number {
+  const { length } = splitData(row, delimiter)
+  const header = preamble.findLast(line => line.trim())
+  const isNamed = delimiter && delimiter !== blanks && header !== undefined && row.split(delimiter).length === length + 1 && splitHeader(header, delimiter)[length]
+  return isNamed ? length + 1 : length
 }
 
 /** Rows like "1,5" under a header without a comma are one column with decimal commas, not two columns. */
@@ -78,7 +89,7 @@ function numericColumns(line: string, delimiter: string): number {
   const bytes = new TextEncoder()
   const values = cells.map((cell) => {
     const text = bytes.encode(cell)
-    return cell.trim() === '' || /^\s*"?nan"?\s*$/i.test(cell) ? null : scanNumber(text, 0, text.length)
+    return cell.trim() === '' || /^\s*"?nan"?\s*$/i.test(cell) || overload.test(cell.trim()) ? null : scanNumber(text, 0, text.length)
   })
   const numbers = values.filter(value => value !== null)
   return numbers.length && !numbers.some(Number.isNaN) ? cells.length : 0

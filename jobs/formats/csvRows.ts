@@ -1,4 +1,4 @@
-import { blanks, delimiters, type CsvLayout } from './csvLayout'
+import { blanks, delimiterNames, delimiters, overload, type CsvLayout } from './csvLayout'
 import { plainEnd, scanNumber, scanPlain } from './numberScan'
 import { RecordError } from './recordError'
 
@@ -8,7 +8,7 @@ const tab = 0x09
 const carriageReturn = 0x0d
 /** SCPI's numbers for "overload" and "no number" (SCPI-1999, volume 1, 7.2.1; from memory). */
 const smallestSentinel = 9.9e37
-const overload = /^"?(?:[-+]?\s*(?:ovl|ovld|ol|ovr|over(?:load|flow|range)?|1\.?#inf\w*|inf(?:inity)?|∞|clip(?:ped)?))"?$/i
+const longestShown = 4000
 /** Lines of text after the last row of numbers that are passed over as a footer. */
 const footerLines = 20
 
@@ -91,7 +91,7 @@ export class CsvRows {
     const { places, delimiter, values, isRuns } = this
     let start = isRuns ? skipBlanks(bytes, from, to) : from
     for (let column = 0; column < places.length; column++) {
-      if (start > to || (isRuns && start === to)) return this.missing(column, bytes, from, to)
+      if (start > to || (isRuns && start === to)) return this.missing(column, textOf(bytes, from, to, longestShown))
       const wanted = places[column]
       let end = start
       if (wanted.length === 0) {
@@ -104,7 +104,7 @@ export class CsvRows {
           while (end < to && bytes[end] !== delimiter && !(isRuns && bytes[end] === tab)) end++
           value = scanNumber(bytes, start, end)
         }
-        if (!(Math.abs(value) < smallestSentinel)) return this.notANumber(column, value, textOf(bytes, start, end))
+        if (!(Math.abs(value) < smallestSentinel)) return this.notANumber(column, value, textOf(bytes, start, end), textOf(bytes, from, to, longestShown))
         for (let i = 0; i < wanted.length; i++) values[wanted[i]] = value
       }
       start = isRuns ? skipBlanks(bytes, end, to) : end + 1
@@ -114,21 +114,26 @@ export class CsvRows {
 
   private columnName = (column: number) => this.layout.headers[column] ? `column “${this.layout.headers[column]}”` : `column ${column}`
 
-  private missing(column: number, bytes: Uint8Array, from: number, to: number): RecordError {
-    const text = textOf(bytes, from, to, 4000)
-    const other = delimiters.find(delimiter => delimiter !== this.layout.delimiter && delimiter !== blanks && text.split(delimiter).length === this.layout.columnCount)
-    if (other) return new RecordError('column-missing', `Line ${this.line} is split by ${nameOf(other)}, but the rows before it by ${nameOf(this.layout.delimiter)}. Export the record again, with one separator throughout.`)
-    return new RecordError('column-missing', `Line ${this.line} ends before ${this.columnName(column)}. Export the record again, with every column in every row.`)
+  private missing(column: number, line: string): RecordError {
+    return this.splitOtherwise(line) ?? new RecordError('column-missing', `Line ${this.line} ends before ${this.columnName(column)}. Export the record again, with every column in every row.`)
   }
 
-  private notANumber(column: number, value: number, text: string): RecordError {
+  /** Whether another delimiter gives the line its columns. */
+  private splitOtherwise(line: string): RecordError | null {
+    const { delimiter: own, columnCount } = this.layout
+    if (line.split(own).length === columnCount) return null
+    const other = delimiters.find(delimiter => delimiter !== own && delimiter !== blanks && line.split(delimiter).length === columnCount)
+    return other === undefined ? null : new RecordError('column-missing', `Line ${this.line} is split by ${delimiterNames[other]}, but the rows before it by ${delimiterNames[own]}. Export the record again, with one separator throughout.`)
+  }
+
+  private notANumber(column: number, value: number, text: string, line: string): RecordError {
+    const otherwise = this.splitOtherwise(line)
+    if (otherwise) return otherwise
     const where = `Line ${this.line}, ${this.columnName(column)}`
     if (overload.test(text) || Math.abs(value) === smallestSentinel) return new RecordError('overload', `${where}: “${text}” says that the input was overloaded, so its value is not known. Turn the input range up and record again.`)
     return new RecordError('not-a-number', `${where}: a number was expected, but ${text ? `“${text}”` : 'nothing'} stands there. Mend the line or export the record again.`)
   }
 }
-
-const nameOf = (delimiter: string) => ({ '\t': 'tabs', ';': 'semicolons', ',': 'commas', '|': 'bars', ' ': 'blanks', '': 'nothing' })[delimiter]
 
 function textOf(bytes: Uint8Array, from: number, to: number, most = 40): string {
   return new TextDecoder().decode(bytes.subarray(from, Math.min(to, from + most))).trim()

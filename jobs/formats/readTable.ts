@@ -1,10 +1,11 @@
 import type { Flag } from '../../shared/measurement'
-import { chooseColumns } from './recordColumns'
+import { chooseColumns, type ChosenColumns } from './recordColumns'
 import { RecordError } from './recordError'
 import { planRecord, storeBlock } from './recordSink'
 import type { RecordData, RecordOptions, RecordSeries, RecordTable } from './recordTable'
 
 const evidenceRows = 64
+const sameRate = 1e-6
 
 /**
  * Read the wanted channels of an opened record.
@@ -19,7 +20,7 @@ export async function readTable(table: RecordTable, options: RecordOptions): Pro
   const asked = options.columns ?? {}
   const needsEvidence = sampleRateHz === null && asked.time === undefined && options.sampleRateHz === undefined
   const chosen = chooseColumns(columns, asked, needsEvidence ? await firstRows(table, evidenceRows) : undefined)
-  const series = commonSeries(table, Object.values(chosen.columns))
+  const series = commonSeries(table, chosen.columns)
   const plan = planRecord(columns, chosen, options, series.sampleRateHz, series.startSeconds, 'Sample')
   const { rows } = series
   if (rows < 2) throw new RecordError('too-short', `The record has ${rows === 1 ? 'one sample' : 'no samples'}. Upload a record with at least two samples.`)
@@ -43,23 +44,27 @@ function addTimes(times: { add: (time: number, row: number) => void }, block: Fl
 }
 
 /**
- * Length, rate and start that hold for all of some columns; the shortest one's length.
+ * Length, rate and start that hold for the chosen channels together; the shortest one's length. A time column
+ * only counts where the channels have no rate of their own.
  *
  * @throws RecordError `rates-differ`, `starts-differ`
  */
-export function commonSeries(table: RecordTable, indices: readonly number[]): RecordSeries & { flags: Flag[] } {
+export function commonSeries(table: RecordTable, { time, ...channels }: ChosenColumns['columns']): RecordSeries & { flags: Flag[] } {
   const { seriesOf, columns, rows, sampleRateHz, startSeconds } = table
-  if (!seriesOf || !indices.length) return { rows, sampleRateHz, startSeconds, flags: [] }
+  if (!seriesOf) return { rows, sampleRateHz, startSeconds, flags: [] }
+  const indices = Object.values(channels)
   const all = indices.map(seriesOf)
   const name = (index: number) => `“${columns[index].name}”`
   const [first] = all
   const rate = first.sampleRateHz
-  const other = all.findIndex(series => series.sampleRateHz !== rate && !(rate && series.sampleRateHz && Math.abs(series.sampleRateHz / rate - 1) < 1e-6))
-  if (other > 0) throw new RecordError('rates-differ', `The channels are not sampled alike: ${name(indices[0])} at ${rate ?? 'an unknown rate'} Hz, ${name(indices[other])} at ${all[other].sampleRateHz ?? 'an unknown rate'} Hz. Take channels of one rate, or export them so.`)
+  const hertz = (value: number | null) => value === null ? 'an unknown rate' : `${Number(value.toPrecision(9))} Hz`
+  const other = all.findIndex(series => series.sampleRateHz !== rate && !(rate && series.sampleRateHz && Math.abs(series.sampleRateHz / rate - 1) < sameRate))
+  if (other > 0) throw new RecordError('rates-differ', `The channels are not sampled alike: ${name(indices[0])} at ${hertz(rate)}, ${name(indices[other])} at ${hertz(all[other].sampleRateHz)}. Take channels of one rate, or export them so.`)
   const late = all.findIndex(series => Math.abs(series.startSeconds - first.startSeconds) * (rate ?? 1) > 0.5)
   if (late > 0) throw new RecordError('starts-differ', `The channels do not begin together: ${name(indices[0])} at ${first.startSeconds} s, ${name(indices[late])} at ${all[late].startSeconds} s. Export them over one span.`)
-  const shortest = Math.min(...all.map(series => series.rows))
-  const flags: Flag[] = all.some(series => series.rows !== shortest) ? [{ code: 'lengths-differ', severity: 'warning', message: `The channels are not of one length; all are read for ${shortest} samples, as long as the shortest. Check that the record is whole.` }] : []
+  const lengths = [...all, ...time !== undefined && rate === null ? [seriesOf(time)] : []].map(series => series.rows)
+  const shortest = Math.min(...lengths)
+  const flags: Flag[] = lengths.some(length => length !== shortest) ? [{ code: 'lengths-differ', severity: 'warning', message: `The channels are not of one length; all are read for ${shortest} samples, as long as the shortest. Check that the record is whole.` }] : []
   return { rows: shortest, sampleRateHz: rate, startSeconds: first.startSeconds, flags }
 }
 

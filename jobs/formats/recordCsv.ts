@@ -1,6 +1,6 @@
 import type { Flag } from '../../shared/measurement'
 import { readCsvHead, type CsvHead } from './csvHead'
-import { blanks } from './csvLayout'
+import { blanks, delimiterNames } from './csvLayout'
 import { CsvRows, type RowsEnd } from './csvRows'
 import { GrowingFloat32 } from './growingFloat32'
 import { chooseColumns } from './recordColumns'
@@ -47,8 +47,7 @@ export async function readCsvRecord(bytes: AsyncIterable<Uint8Array>, options: R
 
 /** "CSV, semicolons". */
 export function describeCsv({ layout: { delimiter, columnCount } }: CsvHead): string {
-  const name = ({ '\t': 'tabs', ';': 'semicolons', ',': 'commas', '|': 'bars', [blanks]: 'blanks' } as Record<string, string>)[delimiter]
-  return name ? `Text, ${columnCount} columns, ${name}` : 'Text, one column'
+  return delimiter ? `Text, ${columnCount} columns, ${delimiterNames[delimiter]}` : 'Text, one column'
 }
 
 /** The first values of every column; NaN where there is no number. */

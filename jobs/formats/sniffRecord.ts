@@ -2,14 +2,14 @@ import type { Flag } from '../../shared/measurement'
 import type { RecordFormat } from '../../shared/records'
 import { readCsvHead } from './csvHead'
 import { openRecord } from './openRecord'
-import { chunksOf, type RandomAccess } from './randomAccess'
-import { chooseColumns, guessColumns, type ColumnGuess } from './recordColumns'
+import { chunksOf, memorySource, type RandomAccess } from './randomAccess'
+import { chooseColumns, guessColumns, type ChosenColumns, type ColumnGuess } from './recordColumns'
 import { describeCsv, firstCsvRows } from './recordCsv'
 import { RecordError } from './recordError'
 import { planRecord } from './recordSink'
-import type { RecordColumn, RecordOptions } from './recordTable'
-import { firstRows } from './readTable'
-import { asUtf8 } from './utf16'
+import type { RecordColumn, RecordOptions, RecordSeries } from './recordTable'
+import { commonSeries, firstRows } from './readTable'
+import { asUtf8, findUtf16 } from './utf16'
 
 export interface RecordSniff {
   format: RecordFormat
@@ -31,10 +31,12 @@ export interface RecordSniff {
 interface Facts extends Pick<RecordSniff, 'format' | 'description' | 'rows' | 'rowsAreExact' | 'sampleRateHz' | 'flags'> {
   columns: RecordColumn[]
   first: Float64Array[]
-  startSeconds: number
+  /** Length, rate and start of the chosen columns together. */
+  series: (chosen: ChosenColumns['columns']) => RecordSeries
 }
 
 const defaultRows = 200
+const sniffedBytes = 1 << 18
 
 /**
  * What a record holds, from its beginning only: format, columns, guesses with reasons, sample rate, first rows.
@@ -43,48 +45,53 @@ const defaultRows = 200
  * @throws RecordError when the format is not known or its header is damaged
  */
 export async function sniffRecord(source: RandomAccess, { filename, previewRows = defaultRows, ...options }: RecordOptions & { filename?: string, previewRows?: number } = {}): Promise<RecordSniff> {
-  const { columns, first, startSeconds, ...facts } = await findFacts(source, filename, previewRows)
-  const asked = options.columns ?? {}
-  const guesses = guessColumns(columns, asked, new Set(), first)
-  const sniff: RecordSniff = {
-    ...facts, needs: null,
+  const facts = await findFacts(source, filename, previewRows)
+  const { format, description, columns, first, rows, rowsAreExact, sampleRateHz, flags } = facts
+  const guesses = guessColumns(columns, options.columns ?? {}, new Set(), first)
+  return {
+    format, description, rows, rowsAreExact, sampleRateHz, flags, needs: null, ...judge(facts, options),
     columns: columns.map(column => ({ ...column, guess: guesses.get(column.index) ?? null })),
     preview: first.map(values => Array.from(values.subarray(0, previewRows), value => Number.isFinite(value) ? value : null)),
   }
+}
+
+/** Length and rate with the guesses, or what stands in their way. */
+function judge({ format, columns, first, series }: Facts, options: RecordOptions): Partial<RecordSniff> {
   try {
-    const chosen = chooseColumns(columns, asked, first)
-    const fileRateHz = facts.format === 'csv' && chosen.columns.time !== undefined ? null : facts.sampleRateHz
-    const plan = planRecord(columns, chosen, options, fileRateHz, startSeconds, facts.format === 'csv' ? 'Line' : 'Sample')
-    const time = chosen.columns.time
-    if (plan.times && time !== undefined) first[time].forEach((value, row) => plan.times!.add(value * plan.timeScale, row))
-    if (!plan.times || (time !== undefined && first[time].length > 1)) sniff.sampleRateHz = plan.timeBase().sampleRateHz
+    const chosen = chooseColumns(columns, options.columns ?? {}, first)
+    const common = series(chosen.columns)
+    // In text a time column goes before what the preamble says.
+    const fileRateHz = format === 'csv' && chosen.columns.time !== undefined ? null : common.sampleRateHz
+    const plan = planRecord(columns, chosen, options, fileRateHz, common.startSeconds, format === 'csv' ? 'Line' : 'Sample')
+    const { times, timeScale } = plan
+    if (times) first[chosen.columns.time!].forEach((value, row) => times.add(value * timeScale, row))
+    return { rows: common.rows, sampleRateHz: plan.timeBase().sampleRateHz }
   } catch (error) {
     if (!(error instanceof RecordError)) throw error
-    sniff.needs = { code: error.code, message: error.message }
+    return { needs: { code: error.code, message: error.message } }
   }
-  return sniff
 }
 
 async function findFacts(source: RandomAccess, filename: string | undefined, previewRows: number): Promise<Facts> {
   const table = await openRecord(source, filename)
   if (table === 'csv') return csvFacts(source, previewRows)
   try {
-    const { format, description, columns, rows, sampleRateHz, startSeconds, flags } = table
-    return { format, description, columns, rows, rowsAreExact: true, sampleRateHz, startSeconds, flags, first: await firstRows(table, previewRows) }
+    const { format, description, columns, rows, sampleRateHz, flags } = table
+    return { format, description, columns, rows, rowsAreExact: true, sampleRateHz, flags, first: await firstRows(table, previewRows), series: chosen => commonSeries(table, chosen) }
   } finally {
     table.close?.()
   }
 }
 
 async function csvFacts(source: RandomAccess, previewRows: number): Promise<Facts> {
-  const head = await readCsvHead(asUtf8(chunksOf(source, 0, Math.min(source.size, 1 << 18))))
-  const first = firstCsvRows(head, previewRows)
-  const headerBytes = head.lines.slice(0, head.layout.headerLines).join('\n').length
-  const dataLines = head.lines.slice(head.layout.headerLines).filter(line => line.trim())
-  const rowBytes = (dataLines.join('\n').length + 1) / dataLines.length
-  const isWhole = source.size <= head.bytes.length + 3
-  return {
-    format: 'csv', description: describeCsv(head), columns: head.columns, first, sampleRateHz: head.layout.sampleRateHz, startSeconds: 0, flags: [],
-    rows: isWhole ? dataLines.length : Math.round((source.size - headerBytes) / rowBytes), rowsAreExact: isWhole,
-  }
+  const chunk = (await source.read(0, Math.min(source.size, sniffedBytes))).slice()
+  const bytesPerCharacter = findUtf16(chunk) ? 2 : 1
+  const head = await readCsvHead(asUtf8(chunksOf(memorySource(chunk))))
+  const { layout: { headerLines, sampleRateHz }, lines, lineBytes } = head
+  const dataLines = lines.slice(headerLines).filter(line => line.trim())
+  const characters = (texts: string[]) => texts.reduce((sum, line) => sum + line.length + 1, 0)
+  const rowBytes = lineBytes * characters(dataLines) / characters(lines) / dataLines.length
+  const isWhole = head.isWhole && chunk.length === source.size
+  const rows = dataLines.length + (isWhole ? 0 : Math.round((source.size / bytesPerCharacter - lineBytes) / rowBytes))
+  return { format: 'csv', description: describeCsv(head), columns: head.columns, first: firstCsvRows(head, previewRows), sampleRateHz, flags: [], rows, rowsAreExact: isWhole, series: () => ({ rows, sampleRateHz, startSeconds: 0 }) }
 }

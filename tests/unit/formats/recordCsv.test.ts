@@ -1,5 +1,5 @@
 import { describe, expect, it } from 'vitest'
-import { scanNumber } from '../../../jobs/formats/numberScan'
+import { plainEnd, scanNumber, scanPlain } from '../../../jobs/formats/numberScan'
 import { readCsvRecord } from '../../../jobs/formats/recordCsv'
 import type { RecordOptions } from '../../../jobs/formats/recordTable'
 
@@ -109,6 +109,43 @@ describe('CSV record', () => {
     expect(await read(Uint8Array.from(encode(text)), {}, 997)).toEqual(expected)
   })
 
+  it.each([
+    ['bars', '|', '|', '.'], ['blanks', ' ', ' ', '.'], ['runs of blanks and tabs', '  \t', ' \t  ', ','], ['blanks before and after', ' ', '   ', '.'],
+  ])('is read with %s', async (_, inHeader, delimiter, decimal) => {
+    const rows = Array.from({ length: 30 }, (_value, i) => `${' '.repeat(delimiter.length === 3 ? 2 : 0)}${[(i / 50).toFixed(2), `-${i}.5`, `1e-${i % 9}`].join(delimiter).replaceAll('.', decimal)}`)
+    const record = await read(`${['t[s]', 'lamp[V]', 'force[N]'].join(inHeader)}\n${rows.join('\n')}\n`)
+    expect(record).toMatchObject({ sampleRateHz: 50, rows: 30 })
+    expect(record.channels.map(({ name, unit, data }) => [name, unit, data[17]])).toEqual([['lamp', 'V', -17.5], ['force', 'N', Math.fround(1e-8)]])
+  })
+
+  it('takes a header that is split otherwise than the rows', async () => {
+    expect(values(await read('t,light,force\n0;1;2\n1;2;3\n'))).toEqual({ illumination: [1, 2], force: [2, 3] })
+    expect(values(await read('Time [s]\tMain lamp [V]  \tForce [N]\n0 1 2\n1 2 3\n'))).toEqual({ illumination: [1, 2], force: [2, 3] })
+  })
+
+  it('takes the sample rate that the preamble states, unless there is a time column', async () => {
+    for (const line of ['Sample rate: 51200 Hz', 'Sampling frequency;51,2 kHz', 'sample_rate\t51200', 'Abtastrate = 51200']) {
+      expect((await read(`${line}\nlamp;force\n1;2\n2;3\n`)).sampleRateHz).toBe(51200)
+      expect((await read(`${line}\nt;lamp\n1;2\n2;3\n`)).sampleRateHz).toBe(1)
+    }
+  })
+
+  it('leaves a footer out, and says so', async () => {
+    const record = await read('t;light\n0;1\n1;2\n2;3\n\nEnd of record\nSamples;3\n')
+    expect(values(record).illumination).toEqual([1, 2, 3])
+    expect(record.flags.find(({ code }) => code === 'footer')?.message).toMatch(/Lines 6 to 7 at the end, “End of record”/)
+  })
+
+  it('begins with numbers though a byte order mark stands before them', async () => {
+    expect(values(await read('\uFEFF1;2\n3;4\n', { columns: { illumination: 0 }, sampleRateHz: 5 }))).toEqual({ illumination: [1, 3] })
+  })
+
+  it('passes over empty columns at the end', async () => {
+    const record = await read('t;light;note\n0;1;\n1;2;\n2;3;\n')
+    expect(record.columns.map(({ name }) => name)).toEqual(['t', 'light', 'note'])
+    expect(record.rows).toBe(3)
+  })
+
   it('reads Latin-1 units without harm to the numbers', async () => {
     expect(values(await read(Uint8Array.from(Buffer.from('t;light;acc [m/s\xb2]\n0;1;2\n1;2;3\n', 'latin1'))))).toEqual({ illumination: [1, 2], acceleration: [2, 3] })
   })
@@ -125,6 +162,14 @@ describe('a CSV record is refused', () => {
     ['with two lamps', 't,lamp A,lamp B\n0,1,2\n1,2,3\n', {}, 'ambiguous-columns', /“lamp A”, “lamp B”/],
     ['that lacks a named column', 't,light\n0,1\n1,2\n', { columns: { force: 'Shaker' } }, 'unknown-column', /“Shaker”.*“t”, “light”/],
     ['that lacks an indexed column', 't,light\n0,1\n1,2\n', { columns: { illumination: 2 } }, 'unknown-column', /number 2/],
+    ['with an overload', 't;light\n0;1\n1;OVL\n2;3\n', {}, 'overload', /Line 3, column “light”: “OVL” says that the input was overloaded/],
+    ['with an overload at its end', 't;light\n0;1\n1;2\n2;-Inf\n', {}, 'overload', /Line 4/],
+    ['with an instrument’s overload number', 't;light\n0;1\n1;9.9E37\n2;3\n', {}, 'overload', /Line 3/],
+    ['with an instrument’s number for none', 't;light\n0;1\n1;9.91E37\n2;3\n', {}, 'not-a-number', /Line 3/],
+    ['with NaN', 't;light\n0;1\n1;NaN\n2;3\n', {}, 'not-a-number', /Line 3, column “light”.*“NaN”/],
+    ['with a row split otherwise', 't;light;force\n0;1;2\n1;2;3\n2,3,4\n3;4;5\n', {}, 'column-missing', /Line 4 is split by commas, but the rows before it by semicolons/],
+    ['whose commas mean two things', 't,light\n0,0,1,5\n0,1,2,5\n', {}, 'ambiguous-delimiter', /Line 2 has 4 cells under a header of 2/],
+    ['with much text after the numbers', `t;light\n0;1\n1;2\n${'and so on\n'.repeat(30)}`, {}, 'not-a-number', /Line 4/],
     ['without time and rate', 'light,force\n0,1\n1,2\n', {}, 'no-time', /sample rate in Hz/],
     ['with a word among the numbers', 't,light\n0,1\n1,2\n2,oops\n3,4\n', {}, 'not-a-number', /Line 4, column “light”.*“oops”/],
     ['with an empty cell', 't;light\n0;1\n1;\n2;3\n', {}, 'not-a-number', /Line 3, column “light”.*nothing stands there/],
@@ -138,6 +183,30 @@ describe('a CSV record is refused', () => {
 })
 
 describe('number scanner', () => {
+  it.each([['-12.5;', -12.5], ['7,25;', 7.25], ['.5', 0.5], ['123456789012345', 123456789012345], ['0;', 0]] as const)('reads the plain number %s in one pass', (text, value) => {
+    const bytes = new TextEncoder().encode(text)
+    const found = scanPlain(bytes, 0, bytes.length, 0x3b)
+    expect([found, plainEnd()]).toEqual([value, text.replace(';', '').length])
+  })
+
+  it.each(['', '-', '.', '-,', ' 1', '1e5', '1.2.3', 'abc', '1234567890123456', '+1', '"1"'])('leaves “%s” to the thorough way', (text) => {
+    const bytes = new TextEncoder().encode(text)
+    scanPlain(bytes, 0, bytes.length, 0x3b)
+    expect(plainEnd()).toBe(-1)
+  })
+
+  it('reads many numbers alike in both ways', () => {
+    let state = 1
+    for (let i = 0; i < 200_000; i++) {
+      state = state * 48271 % 2147483647
+      const text = ((state - 1e9) / 10 ** (i % 12)).toFixed(i % 9)
+      const bytes = new TextEncoder().encode(text)
+      const plain = scanPlain(bytes, 0, bytes.length, 0x2c)
+      if (plainEnd() >= 0 && plain !== Number(text)) expect.fail(text)
+      if (scanNumber(bytes, 0, bytes.length) !== Number(text)) expect.fail(text)
+    }
+  })
+
   it.each(['0', '-0.5', '+3', '1.', '.25', '12345.6789', '1e5', '1.5E-3', '-2.5e+10', '0.000001', '123456789012345', '  42 ', '"7.5"', '3,25'])('reads %s as JavaScript does', (text) => {
     const bytes = new TextEncoder().encode(text)
     expect(scanNumber(bytes, 0, bytes.length)).toBe(Number(text.replace(',', '.').replace(/"/g, '')))
