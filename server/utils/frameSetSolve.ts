@@ -55,6 +55,7 @@ export async function solveFrameSetAgain({ database, store, solver, solving }: S
     await publishSolved(database, user, { id, acquisitionId: set.acquisitionId, line: set.line, frequencyHz: set.frequencyHz, before: files['frameset.npz']!.sha256, groups, checks: solved.checks, review: decided, files: stored })
   } catch (error) {
     for (const key of made) await store.remove(key).catch(() => {})
+    if (!(error instanceof LampsumError) && await hasChanged(database, id, files['frameset.npz']!.sha256)) throw new LampsumError('changed-meanwhile', undefined, { cause: error })
     throw error
   } finally {
     await rm(folder, { recursive: true, force: true })
@@ -94,6 +95,12 @@ function decide(review: FrameSetReview, rejected: number[], user: User, now: Dat
     acceptedByPerson: [...new Set([...review.acceptedByPerson, ...takenBack])].filter(repetition => !rejected.includes(repetition)).sort((a, b) => a - b),
     history: [...review.history, { at: now.toISOString(), byName: user.name, byId: user.id, rejected }],
   }
+}
+
+/** The files may have been taken away under our hands by somebody who was faster. */
+async function hasChanged(database: Database, id: string, sha256: string): Promise<boolean> {
+  const [file] = await database.select({ sha256: frameSetFiles.sha256 }).from(frameSetFiles).where(and(eq(frameSetFiles.frameSetId, id), eq(frameSetFiles.name, 'frameset.npz')))
+  return file?.sha256 !== sha256
 }
 
 /** Folders of a server that was killed while it solved. */

@@ -1,5 +1,5 @@
 import { createHash, randomUUID } from 'node:crypto'
-import { mkdtempSync, rmSync, writeFileSync } from 'node:fs'
+import { mkdtempSync, readdirSync, readFileSync, rmSync, writeFileSync } from 'node:fs'
 import { createServer, request, type IncomingHttpHeaders, type Server } from 'node:http'
 import type { AddressInfo } from 'node:net'
 import { tmpdir } from 'node:os'
@@ -7,18 +7,23 @@ import { join } from 'node:path'
 import { createApp, createError, eventHandler, toNodeListener } from 'h3'
 import { eq } from 'drizzle-orm'
 import { afterAll, beforeAll, describe, expect, it } from 'vitest'
-import { writeNpz } from '../../jobs/formats/npz'
-import { auditEntries, campaignGuests, events, frameSetFiles, frameSets } from '../../server/db/schema'
+import { readNpz, writeNpz } from '../../jobs/formats/npz'
+import { createSolvePool } from '../../jobs/stages/solvePool'
+import { auditEntries, campaignGuests, events, frameSetFiles, frameSets, jobs, stageOutputs } from '../../server/db/schema'
 import { createLocalFileStore, type FileStore } from '../../server/store/fileStore'
 import { sendDownload } from '../../server/utils/fileDownload'
 import { frameSetDownload } from '../../server/utils/frameSetFiles'
 import { frameSetImage } from '../../server/utils/frameSetImages'
+import { solveFrameSetAgain, type SolveContext } from '../../server/utils/frameSetSolve'
 import { getFrameSet, listFrameSets, releaseFrameSet } from '../../server/utils/frameSets'
+import { createSolver, type Solver } from '../../server/utils/solver'
 import { LampsumError } from '../../shared/errors'
+import type { FrameSetReview } from '../../shared/frameSetReview'
 import type { Group } from '../../shared/measurement'
 import type { User } from '../../shared/schemas/people'
 import { openTestDatabase } from '../support/database'
 import { insertAcquisition, insertCampaign, insertUser } from '../support/fixtures'
+import { solverFolder, storedLine, writeStored, type StoredLine } from '../support/solvedSets'
 
 let handle: Awaited<ReturnType<typeof openTestDatabase>>
 let root: string
@@ -195,5 +200,142 @@ describe('release', () => {
 
   it('refuses a set that a newer run has replaced', async () => {
     await expect(releaseFrameSet(handle.database, analyst, await insertSet({ supersededAt: new Date() }), 'Fine.')).rejects.toMatchObject({ code: 'wrong-state', message: expect.stringMatching(/newer/) })
+  })
+})
+
+describe('solving again', () => {
+  let folder: Awaited<ReturnType<typeof solverFolder>>
+  let solver: Solver
+  let line: StoredLine
+  let context: SolveContext
+  const noReview: FrameSetReview = { identity: 'i', repetitionKeys: { 1: 'a', 2: 'b', 3: 'c' }, usable: Array<boolean>(12).fill(true), rejections: [], acceptedByPerson: [], history: [], flags: [] }
+  const filesOf = (id: string) => handle.database.select().from(frameSetFiles).where(eq(frameSetFiles.frameSetId, id))
+  const bytesOf = async (id: string, name: string) => readFileSync(store.localPath((await filesOf(id)).find(file => file.name === name)!.fileKey))
+
+  /** A set of three repetitions, as the check stage leaves it. */
+  async function makeSet(review: Partial<FrameSetReview> = {}, own = acquisition): Promise<string> {
+    const { files, checks } = await writeStored(join(folder.root, randomUUID()), line, createSolvePool({ threads: 1 }))
+    const id = randomUUID()
+    await handle.database.insert(frameSets).values({ id, acquisitionId: own, line: 1, frequencyHz: 400, state: 'draft', cutListVersion: 1, checks, groups: line.groups, review: { ...noReview, ...review }, width: line.content.width, height: line.content.height, createdAt: new Date() })
+    for (const { name, path, bytes, sha256, contentType } of files) {
+      const fileKey = `results/${id}/${name}`
+      await store.put(fileKey, path)
+      await handle.database.insert(frameSetFiles).values({ frameSetId: id, name, bytes, sha256, contentType, fileKey })
+    }
+    return id
+  }
+  const accepted = (groups: Group[]) => [...new Set(groups.filter(each => each.accepted && each.role !== 'dark').map(each => each.repetition))]
+
+  beforeAll(async () => {
+    folder = await solverFolder()
+    solver = createSolver(folder.entry)
+    line = await storedLine(join(folder.root, 'sums'))
+    context = { database: handle.database, store, solver, solving: join(root, 'solving') }
+  })
+  afterAll(async () => {
+    await solver?.close()
+    folder?.remove()
+  })
+
+  it('leaves the named repetitions out, keeps the set’s id, and says who decided, in the set, its manifest, the audit and the live events', async () => {
+    const id = await makeSet()
+    const before = await getFrameSet(handle.database, id)
+    const set = await solveFrameSetAgain(context, analyst, id, [2])
+    expect(set.id).toBe(id)
+    expect(accepted(set.groups)).toEqual([1, 3])
+    expect(set.rejections).toEqual([{ repetition: 2, by: analyst.name, byId: analyst.id, reason: `Rejected by ${analyst.name}.` }])
+    expect(set.history).toMatchObject([{ byName: analyst.name, byId: analyst.id, rejected: [2] }])
+    expect(set.files.map(file => file.sha256)).not.toEqual(before.files.map(file => file.sha256))
+    expect([...readNpz(await bytesOf(id, 'frameset.npz')).accepted!.data]).toEqual([1, 1, 1, 1, 1, 0, 0, 0, 1, 1, 1, 1])
+    expect(JSON.parse((await bytesOf(id, 'manifest.json')).toString())).toMatchObject({ rejections: [{ repetition: 2, by: analyst.name }], files: [{ sha256: set.files.find(file => file.name === 'frameset.npz')!.sha256 }] })
+    expect((await handle.database.select().from(auditEntries).where(eq(auditEntries.subject, id)))).toMatchObject([{ action: 'frame set solved again', details: { rejected: [2] } }])
+    expect((await handle.database.select().from(events).where(eq(events.type, 'acquisition'))).at(-1)!.payload).toEqual({ id: acquisition, campaignId: campaign })
+  })
+
+  it('gives files whose size and SHA-256 are what the set states, and takes the old ones away', async () => {
+    const id = await makeSet()
+    const old = (await filesOf(id)).map(file => file.fileKey)
+    await solveFrameSetAgain(context, analyst, id, [3])
+    for (const file of await filesOf(id)) expect(createHash('sha256').update(readFileSync(store.localPath(file.fileKey))).digest('hex')).toBe(file.sha256)
+    for (const key of old) expect(await store.stat(key)).toBeNull()
+    expect(readdirSync(context.solving)).toEqual([])
+  })
+
+  it('goes back to the first bytes with an empty list, and changes nothing without one', async () => {
+    const id = await makeSet()
+    const hashOf = async () => (await filesOf(id)).find(file => file.name === 'frameset.npz')!.sha256
+    const first = await hashOf()
+    await solveFrameSetAgain(context, analyst, id, [1])
+    const without = await hashOf()
+    expect((await solveFrameSetAgain(context, analyst, id)).rejections.map(({ repetition }) => repetition)).toEqual([1])
+    expect(await hashOf()).toBe(without)
+    expect((await solveFrameSetAgain(context, analyst, id, [])).rejections).toEqual([])
+    expect(await hashOf()).toBe(first)
+  })
+
+  it('keeps the author of a rejection that stays, and remembers what a person took back in', async () => {
+    const id = await makeSet({ rejections: [{ repetition: 1, by: 'program', byId: null, reason: 'Camera motion.' }, { repetition: 2, by: 'program', byId: null, reason: 'Camera motion.' }] })
+    const set = await solveFrameSetAgain(context, analyst, id, [1])
+    expect(set.rejections).toEqual([{ repetition: 1, by: 'program', byId: null, reason: 'Camera motion.' }])
+    const [row] = await handle.database.select({ review: frameSets.review }).from(frameSets).where(eq(frameSets.id, id))
+    expect(row!.review!.acceptedByPerson).toEqual([2])
+    expect(row!.review!.flags).toMatchObject([{ code: 'repetition-rejected', message: expect.stringMatching(/^Repetition 1 was rejected/) }])
+  })
+
+  it('refuses, saying why, and changes nothing: unknown repetition, nothing left, released, replaced, made anew right now', async () => {
+    const id = await makeSet()
+    const files = await filesOf(id)
+    await expect(solveFrameSetAgain(context, analyst, id, [9])).rejects.toMatchObject({ code: 'bad-input', options: { fields: { reject: 'There is no repetition 9 in this set, only 1, 2, 3.' } } })
+    await expect(solveFrameSetAgain(context, analyst, id, [1, 2, 3])).rejects.toMatchObject({ code: 'not-ready', message: expect.stringMatching(/Accept more groups/) })
+    const job = randomUUID()
+    const now = new Date()
+    await handle.database.insert(jobs).values({ id: job, stage: 'check', acquisitionId: acquisition, state: 'running', priority: 100, queuedAt: now, notBefore: now, attempts: 1, crashes: 0, progress: 0, createdAt: now } as typeof jobs.$inferInsert)
+    await expect(solveFrameSetAgain(context, analyst, id, [1])).rejects.toMatchObject({ code: 'wrong-state', message: expect.stringMatching(/right now/) })
+    await handle.database.delete(jobs).where(eq(jobs.id, job))
+    await handle.database.update(frameSets).set({ supersededAt: now }).where(eq(frameSets.id, id))
+    await expect(solveFrameSetAgain(context, analyst, id, [1])).rejects.toMatchObject({ code: 'wrong-state', message: expect.stringMatching(/newer/) })
+    await handle.database.update(frameSets).set({ supersededAt: null, state: 'released' }).where(eq(frameSets.id, id))
+    await expect(solveFrameSetAgain(context, analyst, id, [1])).rejects.toMatchObject({ code: 'wrong-state', message: expect.stringMatching(/released/) })
+    expect(await filesOf(id)).toEqual(files)
+    for (const file of files) expect((await store.stat(file.fileKey))!.bytes).toBe(file.bytes)
+  })
+
+  it('lets the first of two who decide at once have it; the other’s files are gone', async () => {
+    const id = await makeSet()
+    const results = await Promise.allSettled([solveFrameSetAgain(context, analyst, id, [1]), solveFrameSetAgain(context, analyst, id, [2])])
+    expect(results.map(result => result.status).sort()).toEqual(['fulfilled', 'rejected'])
+    expect(results.find(result => result.status === 'rejected')).toMatchObject({ reason: { code: 'changed-meanwhile' } })
+    const winner = results[0]!.status === 'fulfilled' ? [2, 3] : [1, 3]
+    const set = await getFrameSet(handle.database, id)
+    expect(accepted(set.groups)).toEqual(winner)
+    expect(set.history).toHaveLength(1)
+    for (const file of await filesOf(id)) expect(createHash('sha256').update(readFileSync(store.localPath(file.fileKey))).digest('hex')).toBe(file.sha256)
+  })
+
+  it('leaves the set as it was when a release comes in while it solves', async () => {
+    const id = await makeSet()
+    const slow: Solver = { ...solver, solve: async (payload) => {
+      await releaseFrameSet(handle.database, analyst, id, 'Fine as it is.')
+      return solver.solve(payload)
+    } }
+    const files = await filesOf(id)
+    await expect(solveFrameSetAgain({ ...context, solver: slow }, analyst, id, [1])).rejects.toMatchObject({ code: 'wrong-state', message: expect.stringMatching(/released in the meantime/) })
+    expect(await filesOf(id)).toEqual(files)
+    expect(accepted((await getFrameSet(handle.database, id)).groups)).toEqual([1, 2, 3])
+  })
+
+  it('settles the check stage’s job that asked for a decision, and renews its flags', async () => {
+    const own = await insertAcquisition(handle.database, campaign, analyst.id)
+    const id = await makeSet({ flags: [{ code: 'too-few-good-repetitions', severity: 'problem', message: 'Decide.' }] }, own)
+    const now = new Date()
+    const job = { id: randomUUID(), stage: 'check' as const, acquisitionId: own, state: 'needs review' as const, inputsKey: 'k'.repeat(64), priority: 100, queuedAt: now, notBefore: now, attempts: 1, crashes: 0, progress: 1, createdAt: now }
+    await handle.database.insert(jobs).values(job as typeof jobs.$inferInsert)
+    await handle.database.insert(stageOutputs).values({ acquisitionId: own, stage: 'check', jobId: job.id, inputsKey: '', outputKey: 'o', facts: {}, files: {}, createdAt: now, flags: [{ code: 'too-few-good-repetitions', severity: 'problem', message: 'Line 1 (400 Hz): Decide.', stage: 'check' }, { code: 'depth', severity: 'warning', message: 'Line 2 (800 Hz): Shallow.', stage: 'check' }] })
+    await solveFrameSetAgain(context, analyst, id, [1])
+    expect((await handle.database.select().from(jobs).where(eq(jobs.id, job.id)))[0]!.state).toBe('done')
+    const [output] = await handle.database.select().from(stageOutputs).where(eq(stageOutputs.acquisitionId, own))
+    expect(output!.inputsKey).toBe(job.inputsKey)
+    expect(output!.flags.map(({ code }) => code)).toEqual(['depth'])
+    expect(output!.files['line-1-frameset.npz']).toBe((await filesOf(id)).find(file => file.name === 'frameset.npz')!.fileKey)
   })
 })

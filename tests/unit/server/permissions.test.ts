@@ -79,6 +79,7 @@ describe('who may call what', () => {
 
   it.each([
     ['POST /api/frame-sets/:id/release', ['analyst', 'admin']],
+    ['POST /api/frame-sets/:id/solve', ['analyst', 'admin']],
     ['PUT /api/acquisitions/:id/cut-list', ['analyst', 'admin']],
     ['PUT /api/acquisitions/:id/alignment', ['analyst', 'admin']],
     ['POST /api/campaigns/:id/guests', ['analyst', 'admin']],
