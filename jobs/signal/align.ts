@@ -33,6 +33,8 @@ export interface AlignResult extends Alignment {
   predicted: Float64Array
   /** Time missing in mid-clip, in order; offset and drift refer to clip times corrected by it (`correctFrameTimes`). */
   losses: FrameLoss[]
+  /** From a glance only: the best fit and those elsewhere that `planMoreWindows` should tell apart, best first. */
+  contenders?: { offsetSeconds: number, driftPpm: number, gain: number, background: number }[]
 }
 
 /** More odd frames than this share are no accidents: lamp changes that the record has elsewhere look like them. */
@@ -102,6 +104,7 @@ export function alignNear(input: AlignInput, previous: { offsetSeconds: number, 
 interface Found {
   best: Polished
   second: Polished | null
+  contenders?: Polished[]
 }
 
 /** From the best fit to the result: losses in mid-clip, single odd frames, grade. */
@@ -113,6 +116,10 @@ function conclude(input: AlignInput, problem: AlignProblem, found: Found | null,
   const lost = !problem.sparse && timingDisagrees(problem, found.best) ? findLosses(problem, found.best) : null
   if (lost) return reportLosses(input, lost)
   const first = report(input, problem, found)
+  if (problem.sparse) {
+    first.contenders = found.contenders?.map(solution => ({ offsetSeconds: offsetOf(solution), driftPpm: solution.driftPpm, gain: solution.gain, background: solution.background }))
+    return first
+  }
   const odd = oddFrames(input.frameLight, first.predicted)
   if (first.confidence === 0 || odd.length === 0 || odd.length > Math.max(2, mostOddShare * input.frameLight.length)) return first
   const light = input.frameLight.slice()

@@ -24,7 +24,7 @@ interface Series {
 /** Overlap searched, as a share of the shorter one of clip and record. */
 const leastOverlap = 0.2
 /** Bound on phases × drifts × N·log2 N of the transforms; sparse light has little else than its beat to tell places by. */
-const transformBudget = { complete: 4e7, sparse: 6e7 }
+const transformBudget = { complete: 4e7, sparse: 2e7 }
 
 function prefixed(values: Float64Array): Series {
   const sum = new Float64Array(values.length + 1)

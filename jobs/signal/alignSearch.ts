@@ -16,6 +16,7 @@ interface Spanned {
 
 const mostCandidates = { complete: 12, sparse: 60 }
 const mostPolished = 24
+const mostContenders = 16
 /** Longer clips are aligned on a stretch of this length first, which is then doubled up to the whole. */
 export const firstSpanSeconds = 60
 
@@ -109,9 +110,9 @@ export function distinct<T extends { solution: AlignSolution }>(problem: AlignPr
  * local minima polished, the best of them followed to the whole clip.
  *
  * @returns null when nothing overlaps enough; `second` differs by more than half a period of the fastest tone (or, if
- *   that is smaller, a fiftieth of a frame) at one end of the clip
+ *   that is smaller, a fiftieth of a frame) at one end of the clip; `contenders` are both and more such, best first
  */
-export function searchAlignment(problem: AlignProblem): { best: Polished, second: Polished | null } | null {
+export function searchAlignment(problem: AlignProblem): { best: Polished, second: Polished | null, contenders: Polished[] } | null {
   const step = gridStep(problem)
   const candidates = coarseCandidates(problem, problem.sparse ? mostCandidates.sparse : mostCandidates.complete)
   const minima = distinct(problem, candidates.flatMap(candidate => expand(problem, candidate, step)), step)
@@ -119,7 +120,7 @@ export function searchAlignment(problem: AlignProblem): { best: Polished, second
   const polished = minima.slice(0, mostPolished).map(({ solution, range }) => ({ solution: polish(problem, solution, range), range }))
   const fastest = Math.max(1, ...problem.tones.map(tone => tone.frequencyHz))
   const elsewhere = Math.min(0.3 * problem.frameSeconds, Math.max(0.02 * problem.frameSeconds, 0.5 / fastest))
-  const whole = distinct(problem, polished, step).slice(0, 6).map(entry => ({ solution: settle(problem, entry, step) }))
-  const [best, second] = distinct(problem, whole, elsewhere)
-  return { best: best.solution, second: second?.solution ?? null }
+  const whole = distinct(problem, polished, step).slice(0, problem.sparse ? mostContenders : 6).map(entry => ({ solution: settle(problem, entry, step) }))
+  const contenders = distinct(problem, whole, elsewhere).map(entry => entry.solution)
+  return { best: contenders[0], second: contenders[1] ?? null, contenders }
 }

@@ -10,9 +10,9 @@ export interface GlanceInput {
   frameTimesSeconds: ArrayLike<number>
   /** Numbers of the key frames, rising. */
   keyFrames: ArrayLike<number>
-  /** Share of the clip's frames that may be decoded, default 0.04. */
+  /** Share of the clip's frames that may be decoded, default 0.025: `planMoreWindows` may want as many again. */
   share?: number
-  /** Frames that may be decoded whatever the share, default 150. */
+  /** Frames that may be decoded whatever the share, default 120. */
   leastFrames?: number
 }
 
@@ -30,7 +30,7 @@ const windowSeconds = 1.2
 export function planGlance(input: GlanceInput): GlancePlan {
   const { keyFrames } = input
   const frames = input.frameTimesSeconds.length
-  const budget = Math.min(frames, mostFrames, Math.max(input.leastFrames ?? 150, Math.floor((input.share ?? 0.04) * frames)))
+  const budget = Math.min(frames, mostFrames, Math.max(input.leastFrames ?? 120, Math.floor((input.share ?? 0.025) * frames)))
   const useKeyFrames = keyFrames.length <= budget / 3
   const left = budget - (useKeyFrames ? keyFrames.length : 0)
   const frameSeconds = (input.frameTimesSeconds[frames - 1] - input.frameTimesSeconds[0]) / Math.max(1, frames - 1)
