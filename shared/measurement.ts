@@ -107,14 +107,27 @@ export interface AlignmentEvidence {
   reasons: string[]
 }
 
+/** Time missing in mid-clip although the timestamps run on, found by the light. */
+export interface FrameLoss {
+  /** First frame after the gap. */
+  frame: number
+  /** How many frames before it the gap could be as well: the light is level there. */
+  uncertainFrames: number
+  /** Negative: frames were doubled. */
+  lostFrames: number
+  lostSeconds: number
+}
+
 export const groupSchema = z.object({
-  id: z.string(),
+  id: z.string().regex(/^[a-z0-9][a-z0-9-]{0,63}$/i, 'Use letters, digits and hyphens, at most 64.'),
   line: z.number().int(),
   frequencyHz: z.number(),
   repetition: z.number().int(),
   role: groupRoleSchema,
   lampPhaseDeg: z.number().nullable(),
   depth: z.number().nullable(),
+  /** As the regime's; cut lists from before it was kept lack it. */
+  distortion: z.number().nullable().optional(),
   firstFrame: z.number().int().min(0),
   frameCount: z.number().int().min(0),
   accepted: z.boolean(),

@@ -1,8 +1,14 @@
 import type { Flag, Group, PlanLine, Regime } from '../../shared/measurement'
-import { groupFlags, planFlags, repetitionFlags } from './cutFlags'
+import { withoutExcluded, type ExcludedFrames } from './cutExcluded'
+import { frameLossFlag, groupFlags, planFlags, repetitionFlags } from './cutFlags'
 import { assignLines } from './cutLines'
+import { findEarlier, keepSlackSeconds, stillRight } from './cutKeep'
+import { nameGroups } from './cutNames'
 import { placeRegimes, type Placed } from './cutRepetitions'
-import { chooseWholePeriods } from './wholePeriods'
+import { framesInside, type FrameSpan } from './cutSpans'
+import { chooseWholePeriods, type PeriodChoice } from './wholePeriods'
+
+export { framesInside } from './cutSpans'
 
 export interface CutInput {
   regimes: Regime[]
@@ -13,6 +19,10 @@ export interface CutInput {
   /** Kept free on both sides of a frame's exposure inside its regime, default 0.001 s. */
   guardSeconds?: number
   plan?: PlanLine[]
+  /** An earlier cut of the same regimes: its choices are kept where they are still right (`stillRight`), and its ids. */
+  keep?: readonly Group[]
+  /** Frames whose time is not known; no group holds one. */
+  excluded?: readonly ExcludedFrames[]
 }
 
 export interface CutResult {
@@ -20,74 +30,45 @@ export interface CutResult {
   flags: Flag[]
 }
 
-/** Frames [first, end) whose exposure plus guard lies wholly inside [start, end] of record time. */
-export function framesInside(starts: Float64Array, exposureSeconds: number, guardSeconds: number, startSeconds: number, endSeconds: number): { first: number, count: number } {
-  let low = 0
-  let high = starts.length
-  while (low < high) {
-    const middle = (low + high) >> 1
-    if (starts[middle] - guardSeconds < startSeconds) low = middle + 1
-    else high = middle
-  }
-  const first = low
-  high = starts.length
-  while (low < high) {
-    const middle = (low + high) >> 1
-    if (starts[middle] + exposureSeconds + guardSeconds <= endSeconds) low = middle + 1
-    else high = middle
-  }
-  return { first, count: low - first }
-}
-
-/** 90° steps where the lamp keeps them (within 20°), else tens of degrees, in 0…359. */
-function phaseName(lampPhaseDeg: number): string {
-  const quarter = Math.round(lampPhaseDeg / 90) * 90
-  const rounded = Math.abs(lampPhaseDeg - quarter) <= 20 ? quarter : Math.round(lampPhaseDeg / 10) * 10
-  return `p${((rounded % 360) + 360) % 360}`
-}
-
-function nameGroups(groups: Group[]): void {
-  const used = new Map<string, number>()
-  for (const group of groups) {
-    const part = group.role === 'phase' ? phaseName(group.lampPhaseDeg!) : group.role === 'dark' ? 'dark' : 'ref'
-    const id = `l${group.line}-r${group.repetition}-${part}`
-    const count = (used.get(id) ?? 0) + 1
-    used.set(id, count)
-    group.id = count === 1 ? id : `${id}-${count}`
-  }
-}
-
 /**
  * Make the cut list: which frames are summed into which group.
  *
  * A frame belongs to a regime when its exposure window, widened by the guard on both sides, lies wholly inside it; all
  * others are left out. Lines, repetitions and roles follow from the regimes (`assignLines`, `placeRegimes`); of every
- * phase group the part, at least 90 % of it, with the least whole-period error is kept (`chooseWholePeriods`).
+ * phase group the part, at least 90 % of it, with the least whole-period error is kept (`chooseWholePeriods`). A group that
+ * excluded frames divide is its larger side; where that is less than half of a lit group, all groups of the repetition are
+ * flagged `frame-loss` and not accepted.
  *
  * @returns groups in order of their first frame, ids such as `l1-r2-p90`, `l1-r2-ref`, `l1-r2-dark` (`-2` for a second one
  *   of a kind); `frequencyHz` is the line's measured frequency. Regimes that no frame fits into give a flag, no group.
  */
 export function cutFrames(input: CutInput): CutResult {
-  const { regimes, alignment, exposureSeconds, guardSeconds = 0.001, plan = [] } = input
+  const { regimes, alignment, exposureSeconds, plan = [], keep = [] } = input
   const starts = Float64Array.from(input.frameTimesSeconds, time => alignment.offsetSeconds + (1 + alignment.driftPpm * 1e-6) * time)
   const placed = placeRegimes(regimes, assignLines(regimes, plan))
   const flags: Flag[] = []
   const groups: Group[] = []
+  const earlier = new Map<Group, Group>()
+  const damaged = new Map<string, { line: number, repetition: number }>()
   if (!placed.length) {
     flags.push({ code: 'no-lines', severity: 'problem', message: 'No harmonic lamp was found, so there is nothing to sum; check the illumination channel and the alignment.' })
   }
   for (const place of placed) {
     const regime = regimes[place.index]
-    const group = makeGroup(regime, place, starts, exposureSeconds, guardSeconds)
+    const { group, inside, whole } = makeGroup(input, place, starts)
+    if (regime.kind !== 'dark' && inside.count < whole.count / 2) damaged.set(repetitionKey(group), group)
     if (group.frameCount > 0) {
       group.flags = groupFlags(group, regime, exposureSeconds, place.line.planned !== null, plan.length > 0)
       groups.push(group)
-    } else if (regime.kind !== 'dark') {
+      const match = findEarlier(group, keep)
+      if (match) earlier.set(group, match)
+    } else if (regime.kind !== 'dark' && whole.count === 0) {
       flags.push(outsideFlag(regime, starts, exposureSeconds))
     }
   }
   groups.sort((a, b) => a.firstFrame - b.firstFrame)
-  nameGroups(groups)
+  nameGroups(groups, earlier)
+  for (const [key, { line, repetition }] of damaged) flags.push(refuse(groups.filter(group => repetitionKey(group) === key), line, repetition))
   for (const key of new Set(groups.map(repetitionKey))) flags.push(...repetitionFlags(groups.filter(group => repetitionKey(group) === key)))
   flags.push(...planFlags(groups, plan))
   return { groups, flags }
@@ -97,20 +78,43 @@ function repetitionKey(group: Group): string {
   return `${group.line}/${group.repetition}`
 }
 
-function makeGroup(regime: Regime, place: Placed, starts: Float64Array, exposureSeconds: number, guardSeconds: number): Group {
-  const inside = framesInside(starts, exposureSeconds, guardSeconds, regime.startSeconds, regime.endSeconds)
+function refuse(groups: Group[], line: number, repetition: number): Flag {
+  const flag = frameLossFlag(line, repetition)
+  for (const group of groups) {
+    group.accepted = false
+    group.flags.push(flag)
+  }
+  return flag
+}
+
+/** `whole`: the frames inside the regime, `inside`: their larger side when excluded frames divide them. */
+function makeGroup(input: CutInput, place: Placed, starts: Float64Array): { group: Group, inside: FrameSpan, whole: FrameSpan } {
+  const { exposureSeconds, guardSeconds = 0.001, excluded = [] } = input
+  const regime = input.regimes[place.index]
+  const { startSeconds, endSeconds } = regime
+  const whole = framesInside(starts, exposureSeconds, guardSeconds, startSeconds, endSeconds)
+  const inside = withoutExcluded(whole.first, whole.count, excluded)
   const role = regime.kind === 'dark' ? 'dark' : regime.kind === 'constant' ? 'reference' : 'phase'
-  let { first, count } = inside
-  if (role === 'phase' && count > 1) {
-    const startsSeconds = starts.slice(first, first + count)
-    const choice = chooseWholePeriods({ startsSeconds, exposureSeconds, frequencyHz: place.line.frequencyHz, depth: regime.depth ?? 0 })
-    first += choice.first
-    count = choice.count
+  const choose = ({ first, count }: FrameSpan, leastShare?: number): PeriodChoice => {
+    if (role !== 'phase' || count < 2) return { first: 0, count, error: 0, errorOfAll: 0 }
+    return chooseWholePeriods({ startsSeconds: starts.subarray(first, first + count), exposureSeconds, frequencyHz: place.line.frequencyHz, depth: regime.depth ?? 0 }, leastShare)
   }
-  return {
+  const best = choose(inside)
+  const group: Group = {
     id: '', line: place.line.line, frequencyHz: place.line.frequencyHz, repetition: place.repetition, role,
-    lampPhaseDeg: regime.lampPhaseDeg, depth: regime.depth, firstFrame: first, frameCount: count, accepted: true, flags: [],
+    lampPhaseDeg: regime.lampPhaseDeg, depth: regime.depth, distortion: regime.distortion,
+    firstFrame: inside.first + best.first, frameCount: best.count, accepted: true, flags: [],
   }
+  const earlier = findEarlier(group, input.keep ?? [])
+  if (earlier) {
+    const widest = framesInside(starts, exposureSeconds, guardSeconds - keepSlackSeconds(guardSeconds, exposureSeconds), startSeconds, endSeconds)
+    const kept = choose({ first: earlier.firstFrame, count: earlier.frameCount }, 1)
+    if (stillRight(earlier, widest, inside, excluded, { kept: kept.error, best: best.error })) {
+      group.firstFrame = earlier.firstFrame
+      group.frameCount = earlier.frameCount
+    }
+  }
+  return { group, inside, whole }
 }
 
 function outsideFlag(regime: Regime, starts: Float64Array, exposureSeconds: number): Flag {

@@ -44,6 +44,11 @@ export function repetitionFlags(groups: Group[]): Flag[] {
   return flags
 }
 
+/** Frames were lost inside of a repetition, and less than half of one of its groups is left in one piece. */
+export function frameLossFlag(line: number, repetition: number): Flag {
+  return { code: 'frame-loss', severity: 'warning', message: `Frames were lost in line ${line}, repetition ${repetition}, so it is left out; repeat it if too few repetitions remain.` }
+}
+
 /** What the plan asks for and the record does not hold. */
 export function planFlags(groups: Group[], plan: PlanLine[]): Flag[] {
   const flags: Flag[] = []
