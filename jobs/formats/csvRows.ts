@@ -1,5 +1,6 @@
 import { blanks, delimiterNames, delimiters, overload, type CsvLayout } from './csvLayout'
-import { plainEnd, scanNumber, scanPlain } from './numberScan'
+import { scanNumber } from './numberScan'
+import { QuickRow } from './quickRow'
 import { RecordError } from './recordError'
 
 const newline = 0x0a
@@ -33,6 +34,7 @@ export class CsvRows {
   private readonly isRuns: boolean
   /** Column → places in `values`. */
   private readonly places: number[][]
+  private readonly quick: QuickRow | null
   private doubt: { error: RecordError, line: number, text: string } | null = null
 
   constructor(private readonly layout: CsvLayout, wanted: readonly number[], private readonly onRow: (values: Float64Array, line: number) => void) {
@@ -40,22 +42,38 @@ export class CsvRows {
     this.delimiter = layout.delimiter ? layout.delimiter.charCodeAt(0) : -1
     this.isRuns = layout.delimiter === blanks
     this.places = Array.from({ length: Math.max(...wanted) + 1 }, (_, column) => wanted.flatMap((value, place) => value === column ? [place] : []))
+    this.quick = this.isRuns || this.places.some(({ length }) => length > 1) ? null : new QuickRow(this.delimiter, this.places.map(([place = -1]) => place), this.values)
   }
 
   /** @throws RecordError `not-a-number`, `overload`, `column-missing`, naming the line */
   feed(chunk: Uint8Array): void {
-    let bytes = chunk
-    if (this.carry.length) {
-      bytes = new Uint8Array(this.carry.length + chunk.length)
-      bytes.set(this.carry)
-      bytes.set(chunk, this.carry.length)
-    }
     let at = 0
-    for (let end = bytes.indexOf(newline); end >= 0; end = bytes.indexOf(newline, at)) {
-      this.row(bytes, at, end)
+    if (this.carry.length) {
+      const end = chunk.indexOf(newline)
+      const line = join(this.carry, end < 0 ? chunk : chunk.subarray(0, end + 1))
+      this.carry = end < 0 ? line : new Uint8Array(0)
+      if (end < 0) return
+      this.lines(line, 0, line.length)
       at = end + 1
     }
-    this.carry = new Uint8Array(bytes.subarray(at))
+    const stop = Math.max(at, chunk.lastIndexOf(newline) + 1)
+    this.lines(chunk, at, stop)
+    this.carry = new Uint8Array(chunk.subarray(stop))
+  }
+
+  /** Whole lines, each with its end. */
+  private lines(bytes: Uint8Array, from: number, stop: number): void {
+    for (let at = from; at < stop;) {
+      const next = this.quick && !this.doubt && this.line >= this.layout.headerLines ? this.quick.read(bytes, at) : 0
+      if (next > 0) {
+        this.onRow(this.values, ++this.line)
+        at = next
+      } else {
+        const end = bytes.indexOf(newline, at)
+        this.row(bytes, at, end)
+        at = end + 1
+      }
+    }
   }
 
   /** Takes the last line if it is whole. */
@@ -94,16 +112,9 @@ export class CsvRows {
       if (start > to || (isRuns && start === to)) return this.missing(column, textOf(bytes, from, to, longestShown))
       const wanted = places[column]
       let end = start
-      if (wanted.length === 0) {
-        while (end < to && bytes[end] !== delimiter && !(isRuns && bytes[end] === tab)) end++
-      } else {
-        let value = scanPlain(bytes, start, to, delimiter)
-        end = plainEnd()
-        if (end < 0) {
-          end = start
-          while (end < to && bytes[end] !== delimiter && !(isRuns && bytes[end] === tab)) end++
-          value = scanNumber(bytes, start, end)
-        }
+      while (end < to && bytes[end] !== delimiter && !(isRuns && bytes[end] === tab)) end++
+      if (wanted.length) {
+        const value = scanNumber(bytes, start, end)
         if (!(Math.abs(value) < smallestSentinel)) return this.notANumber(column, value, textOf(bytes, start, end), textOf(bytes, from, to, longestShown))
         for (let i = 0; i < wanted.length; i++) values[wanted[i]] = value
       }
@@ -133,6 +144,13 @@ export class CsvRows {
     if (overload.test(text) || Math.abs(value) === smallestSentinel) return new RecordError('overload', `${where}: “${text}” says that the input was overloaded, so its value is not known. Turn the input range up and record again.`)
     return new RecordError('not-a-number', `${where}: a number was expected, but ${text ? `“${text}”` : 'nothing'} stands there. Mend the line or export the record again.`)
   }
+}
+
+function join(a: Uint8Array, b: Uint8Array): Uint8Array<ArrayBuffer> {
+  const both = new Uint8Array(a.length + b.length)
+  both.set(a)
+  both.set(b, a.length)
+  return both
 }
 
 function textOf(bytes: Uint8Array, from: number, to: number, most = 40): string {

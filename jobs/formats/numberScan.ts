@@ -1,4 +1,4 @@
-const powersOfTen = Array.from({ length: 23 }, (_, exponent) => 10 ** exponent)
+export const powersOfTen = Array.from({ length: 23 }, (_, exponent) => 10 ** exponent)
 const exactMantissa = 2 ** 53 / 10 - 1
 
 const isBlank = (byte: number) => byte === 0x20 || byte === 0x22 || byte === 0x09 || byte === 0x0d
@@ -67,43 +67,4 @@ function scale(mantissa: number, exponent: number): number {
   if (exponent < 0 && exponent >= -22) return mantissa / powersOfTen[-exponent]
   if (exponent > 0 && exponent <= 22) return mantissa * powersOfTen[exponent]
   return mantissa * 10 ** exponent
-}
-
-let endOfPlain = -1
-
-/** Where the field that `scanPlain` read ends: at its delimiter or at `to`; −1 when it was not a plain number. */
-export const plainEnd = (): number => endOfPlain
-
-/**
- * Read a field that is a plain number ("-12.345", "7,5") up to its delimiter in one pass; `plainEnd` says whether it was.
- * The same values as `scanNumber`, which takes everything else.
- *
- * @param delimiter its byte; −1 for none
- */
-export function scanPlain(bytes: Uint8Array, from: number, to: number, delimiter: number): number {
-  endOfPlain = -1
-  const negative = bytes[from] === 0x2d
-  let at = negative ? from + 1 : from
-  let mantissa = 0
-  let decimals = -1
-  const first = at
-  for (; at < to; at++) {
-    const digit = bytes[at] - 0x30
-    if (digit >= 0 && digit <= 9) {
-      mantissa = mantissa * 10 + digit
-      if (decimals >= 0) decimals++
-    } else if (bytes[at] === delimiter) {
-      break
-    } else if ((digit === -2 || digit === -4) && decimals < 0) {
-      decimals = 0
-    } else {
-      return Number.NaN
-    }
-  }
-  // 15 digits and a point at most: exact as integers, and so is the power of ten.
-  const length = at - first
-  if (length === 0 || length > 16 || (length === 1 && decimals === 0) || (length === 16 && decimals < 0)) return Number.NaN
-  endOfPlain = at
-  const value = decimals > 0 ? mantissa / powersOfTen[decimals] : mantissa
-  return negative ? -value : value
 }
