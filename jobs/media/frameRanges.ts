@@ -1,7 +1,7 @@
 import { frameAtTick, lastNotAbove, type FrameIndex } from './frameIndex'
 import { FrameTicks, ticksFilter } from './frameTicks'
 import { runProcess } from './ffmpegProcess'
-import { lumaArguments } from './frames'
+import { lumaArguments, sizeChanges } from './frames'
 import { assembleLuma, frameBytesOf, ownTarget, type FrameTarget, type OnFrame, type ReadableClip } from './lumaStream'
 import { MediaError } from './mediaError'
 import { normalizeRanges, planRuns, type FrameRange } from './rangePlan'
@@ -102,7 +102,7 @@ async function decodeFrom({ path, clip, index, options, onFrame }: Source, start
     const tick = await frameTicks.of(output)
     // What the decoder complained about before this frame came out is on standard error by now: let it be read.
     await new Promise(settle => setImmediate(settle))
-    if (frameTicks.restarted) throw new MediaError('size-changes', `The picture size changes within the clip: it is not ${clip.width}×${clip.height} throughout. Record it again with one setting.`)
+    if (frameTicks.restarted) throw sizeChanges(clip)
     const frame = judge.frameOf(output, tick)
     if (frame === 'lost' || frame >= last) return 'stop'
     return wanted(frame) ? options.target(frame, frameBytesOf(clip)) : null

@@ -1,5 +1,6 @@
 import { availableParallelism } from 'node:os'
 import { editListOptions, inputFile, inputLimits, runProcess } from './ffmpegProcess'
+import { FrameTicks, ticksFilter } from './frameTicks'
 import { assembleLuma, frameBytesOf, ownTarget, type FrameTarget, type OnFrame, type ReadableClip } from './lumaStream'
 import { MediaError } from './mediaError'
 
@@ -37,20 +38,29 @@ export async function readFrames(path: string, clip: ReadableClip, { signal, fir
   const frameBytes = frameBytesOf(clip)
   const last = firstFrame + frameCount
   const progress = new ProgressCount()
+  const ticks = new FrameTicks()
   const assembled = { frames: 0, bytes: 0 }
   const { exitCode, stderrTail, errorLines } = await runProcess('ffmpeg', decodeArguments(path, clip.container, threads, last), {
     signal,
-    onSide: text => progress.add(text),
+    onSide(text) {
+      progress.add(text)
+      ticks.add(text)
+    },
     onPixels: (pipe, stop) => assembleLuma(pipe, stop, clip, assembled, {
-      begin: index => index >= firstFrame && index < last ? target(index, frameBytes) : null,
+      begin: (index) => {
+        if (ticks.restarted) throw sizeChanges(clip)
+        return index >= firstFrame && index < last ? target(index, frameBytes) : null
+      },
       take: onFrame,
     }),
   })
   if (exitCode !== 0) throw new MediaError('decode-failed', `The decoder stopped after ${assembled.frames} frames: ${errorLines.at(-1) ?? `exit code ${exitCode}`}. The file may be damaged: upload it again from the card.`, { stderrTail })
-  if (progress.frames !== null && assembled.bytes !== progress.frames * frameBytes) throw new MediaError('size-changes', `The picture size changes within the clip: it is not ${clip.width}×${clip.height} throughout. Record it again with one setting.`, { stderrTail })
+  if (ticks.restarted || (progress.frames !== null && assembled.bytes !== progress.frames * frameBytes)) throw sizeChanges(clip, stderrTail)
   if (assembled.bytes !== assembled.frames * frameBytes) throw new MediaError('frame-truncated', `The decoder ended in the middle of frame ${assembled.frames}. Upload the clip again from the card.`, { stderrTail })
   return { frameCount: Math.max(0, Math.min(assembled.frames, last) - firstFrame), stderrTail, errorLines }
 }
+
+export const sizeChanges = ({ width, height }: ReadableClip, stderrTail = '') => new MediaError('size-changes', `The picture size changes within the clip: it is not ${width}×${height} throughout. Record it again with one setting.`, { stderrTail })
 
 /** One frame more in the making than ffmpeg's own choice fills the time in which a frame waits to be written out. */
 const defaultThreads = () => Math.min(16, availableParallelism() + 2)
@@ -70,7 +80,7 @@ export function lumaArguments(path: string, container: string, { threads, input 
 }
 
 function decodeArguments(path: string, container: string, threads: number | undefined, lastFrame: number): string[] {
-  return lumaArguments(path, container, { threads, output: [...Number.isFinite(lastFrame) ? ['-frames:v', String(lastFrame)] : [], '-progress', 'pipe:3'] })
+  return lumaArguments(path, container, { threads, filters: [ticksFilter], output: [...Number.isFinite(lastFrame) ? ['-frames:v', String(lastFrame)] : [], '-progress', 'pipe:3'] })
 }
 
 /** Frames that ffmpeg says it wrote, from its progress lines. */

@@ -9,6 +9,8 @@ export interface PacketList {
   untimed: boolean
   /** Compressed size of the video. */
   bytes: number
+  /** Compressed size of each frame, in display order. */
+  frameBytes: Float64Array
   /** Display numbers of the frames whose packets are marked as key, ascending. */
   keyFrames: Int32Array
   /** The same frames as their packets are stored. */
@@ -22,6 +24,7 @@ export async function listPackets(path: string, container: string, signal?: Abor
   const presentation: number[] = []
   const decoding: number[] = []
   const keys: number[] = []
+  const sizes: number[] = []
   let bytes = 0
   let partial = ''
   const add = (line: string) => {
@@ -30,6 +33,7 @@ export async function listPackets(path: string, container: string, signal?: Abor
     if (flags?.startsWith('K')) keys.push(presentation.length)
     presentation.push(ticksOf(pts))
     decoding.push(ticksOf(dts))
+    sizes.push(Number(size))
     bytes += Number(size)
   }
   const { errorLines } = await runProcess('ffprobe', [
@@ -53,7 +57,7 @@ export async function listPackets(path: string, container: string, signal?: Abor
   const rank = new Int32Array(order.length)
   order.forEach((packet, frame) => rank[packet] = frame)
   const keysInDecodingOrder = Int32Array.from(keys, packet => rank[packet])
-  return { ticks: Float64Array.from(order, packet => times[packet]), decodeTimesOnly, untimed, bytes, keyFrames: keysInDecodingOrder.slice().sort(), keysInDecodingOrder, errorLines }
+  return { ticks: Float64Array.from(order, packet => times[packet]), decodeTimesOnly, untimed, bytes, frameBytes: Float64Array.from(order, packet => sizes[packet]), keyFrames: keysInDecodingOrder.slice().sort(), keysInDecodingOrder, errorLines }
 }
 
 const ticksOf = (text: string | undefined) => text === undefined || text === '' || text === 'N/A' ? Number.NaN : Number(text)

@@ -4,6 +4,7 @@ import { clipFlags } from './clipFlags'
 import { resolveRange, resolveTransfer } from './colour'
 import { findEntryFrames } from './entryFrames'
 import { maximumPixels } from './ffmpegProcess'
+import { examineFileEnd, type FileEnd } from './fileEnd'
 import type { FrameIndex } from './frameIndex'
 import { MediaError } from './mediaError'
 import { openContainer } from './openContainer'
@@ -19,6 +20,8 @@ export interface ProbeResult {
   frameTimesSeconds: Float64Array
   /** For random access to the frames. */
   index: FrameIndex
+  /** Compressed size of each frame, in display order. */
+  frameBytes: Float64Array
 }
 
 /**
@@ -47,9 +50,10 @@ export async function probeClip(path: string, settings: { transfer: Transfer, ra
     range: range.value, rangeSource: range.source, transfer: transfer.value, transferSource: transfer.source, audioTracks,
     bitsPerPixel: 8 * packets.bytes / (frameCount * video.width * video.height),
   }
-  assertComplete(facts, video)
+  const end = await examineFileEnd(path, container)
+  assertComplete(facts, video, end)
   const index: FrameIndex = { timeBase: video.timeBase, ticks: packets.ticks, keyFrames: packets.keyFrames, ...await findEntryFrames(path, container, video.codec, packets, signal) }
-  return { facts, flags: [...range.flags, ...transfer.flags, ...times.flags, ...clipFlags(facts, video, packets)], frameTimesSeconds: times.frameTimesSeconds, index }
+  return { facts, flags: [...range.flags, ...transfer.flags, ...times.flags, ...clipFlags(facts, video, packets, end)], frameTimesSeconds: times.frameTimesSeconds, index, frameBytes: packets.frameBytes }
 }
 
 function assertMeasurable({ width, height, pixelFormat, codec }: VideoStream): void {
@@ -60,14 +64,17 @@ function assertMeasurable({ width, height, pixelFormat, codec }: VideoStream): v
 }
 
 /** A header that is off by a frame or two is flagged; a file that ends early is refused, with what it should hold. */
-function assertComplete(facts: ClipFacts, video: VideoStream): void {
+function assertComplete(facts: ClipFacts, video: VideoStream, end: FileEnd): void {
   const { frameCount, containerFrameCount } = facts
-  const { missing, allowed } = containerFrameCount === null ? missingByLength(facts, video) : { missing: containerFrameCount - frameCount, allowed: 0 }
+  const { missing, allowed } = containerFrameCount === null ? missingByLength(facts, video, end) : { missing: containerFrameCount - frameCount, allowed: 0 }
   if (missing > Math.max(2, 0.01 * frameCount, allowed)) throw new MediaError('clip-incomplete', `The file ends early: ${frameCount} of ${frameCount + missing} frames are there. Copy the clip again from the card and upload it.`)
+  // A part that claims more than the file holds is no loss where every frame that the container counts is there.
+  if (end.state === 'cut' && !(containerFrameCount !== null && missing <= 0)) throw new MediaError('clip-incomplete', `The file ends ${end.detail}: ${frameCount} frames are there, ${missing > 0 ? `${frameCount + missing} should be` : 'and how many are missing it does not say'}. Copy the clip again from the card and upload it.`)
 }
 
 /** Where frames are not counted, the stated length must be reached; gaps within the clip are no matter here. */
-function missingByLength({ frameRateHz, durationSeconds, container, audioTracks }: ClipFacts, video: VideoStream): { missing: number, allowed: number } {
+function missingByLength({ frameRateHz, durationSeconds, container, audioTracks }: ClipFacts, video: VideoStream, { expectedSeconds }: FileEnd): { missing: number, allowed: number } {
+  if (expectedSeconds !== undefined) return { missing: Math.round((expectedSeconds - durationSeconds) * frameRateHz), allowed: audioTracks ? frameRateHz : 0 }
   // MOV's stated length follows its edit list. The length of the whole file may be that of its sound, which can go on a little.
   if (video.durationSeconds === null || container.split(',').includes('mov')) return { missing: 0, allowed: 0 }
   return { missing: Math.round((video.durationSeconds - durationSeconds) * frameRateHz), allowed: audioTracks ? frameRateHz : 0 }
