@@ -22,6 +22,8 @@ const recentCells = 4
 /** Modulation below this counts as ripple on a constant lamp, unless its frequency is a planned one. */
 const leastDepth = 0.08
 const leastPlannedDepth = 0.025
+/** No lamp is modulated at less than this share of the highest level; what a tone there would be is pick-up in the dark. */
+const dimmestLevel = 0.3
 
 interface Search {
   samples: Float32Array
@@ -57,7 +59,7 @@ function seed(search: Search, cell: number): LampRun | null {
   const { cells } = search
   if (cell + constantSeedCells > cells.count) return null
   const level = Math.max(Math.abs(cells.mean[cell]), 0.05 * cells.scale)
-  const harmonic = cleanestSeed(search, cell, level)
+  const harmonic = cleanestSeed(search, cell, Math.max(level, dimmestLevel * cells.scale))
   if (harmonic) return harmonic
   const rough = Math.max(cells.deviation[cell], cells.deviation[cell + 1])
   const steady = Math.abs(cells.mean[cell + 1] - cells.mean[cell]) < 0.02 * cells.scale
@@ -110,11 +112,15 @@ function seedTone(search: Search, cell: number, level: number): SineFit | null {
   return fit.rmsResidual < 0.35 * fit.amplitude / Math.SQRT2 ? fit : null
 }
 
-/** Amplitude and residual are those of the averaged samples, a percent lower at most. */
+/**
+ * Amplitude and residual are those of the averaged samples, a percent lower at most. A fit that slid down to less than one
+ * and a half cycles in a seed is none: level changes look like that.
+ */
 function refine(search: Search, guessHz: number, range: { first: number, count: number }): SineFit | null {
   const { samples, sampleRateHz, origin } = decimateStretch(search.samples, search.sampleRateHz, range, guessHz)
   try {
-    return fitSine4(samples, sampleRateHz, guessHz, { origin })
+    const fit = fitSine4(samples, sampleRateHz, guessHz, { origin })
+    return fit.frequencyHz * harmonicSeedCells * search.cells.samplesPerCell < 1.5 * search.sampleRateHz ? null : fit
   } catch (error) {
     if (error instanceof SineFitError) return null
     throw error

@@ -57,6 +57,21 @@ function continues(samples: Float32Array, sampleRateHz: number, left: LampStretc
     && Math.abs(after.amplitude / before.amplitude - 1) < 0.05 && Math.abs(step) < 0.03 * scale
 }
 
+/**
+ * Mains pick-up in the dark looks like a harmonic lamp that goes below zero light: its amplitude exceeds its height above
+ * the lowest level, and that height is next to nothing beside the lit levels.
+ */
+function isPickUp(entry: Fitted, lowest: number, lit: number): boolean {
+  const height = entry.level - lowest
+  return entry.fit !== null && height < 0.1 * (lit - lowest) && entry.fit.amplitude > 1.5 * height && entry.fit.amplitude < 0.3 * (lit - lowest)
+}
+
+function withoutPickUp(fitted: Fitted[]): Fitted[] {
+  const lit = Math.max(...fitted.map(entry => entry.level))
+  const lowest = Math.min(...fitted.map(entry => entry.level))
+  return fitted.map(entry => isPickUp(entry, lowest, lit) ? { ...entry, fit: null, stretch: { ...entry.stretch, kind: 'constant', frequencyHz: null } } : entry)
+}
+
 /** Lamp off: near the lowest level, far below lit, and not above the troughs of the harmonic regimes. */
 function markDark(fitted: Fitted[]): Set<Fitted> {
   const lit = Math.max(0, ...fitted.map(entry => entry.level))
@@ -168,7 +183,7 @@ export function findRegimes(illumination: Float32Array, sampleRateHz: number, op
   const refined = refineBoundaries(illumination, sampleRateHz, whole, cells).filter(stretch => stretch.end - stretch.first > 8)
   const joined = joinContinued(illumination, sampleRateHz, refined, cells.scale)
     .filter(stretch => stretch.end - stretch.first >= (stretch.kind === 'harmonic' ? minimumSeconds : minimumSeconds / 3) * sampleRateHz)
-  const fitted = fitStretches(illumination, sampleRateHz, joined, planned)
+  const fitted = withoutPickUp(fitStretches(illumination, sampleRateHz, joined, planned))
   const dark = markDark(fitted)
   const kept = fitted.filter(entry => dark.has(entry) || entry.stretch.end - entry.stretch.first >= minimumSeconds * sampleRateHz)
   let darkLevel: number | null = null
