@@ -98,6 +98,7 @@ function readFields(descr: PythonLiteral[], prefix: string): { fields: Field[], 
     const [label, code, shape = []] = entry as [PythonLiteral, PythonLiteral, (number | number[])?]
     const name = prefix + (Array.isArray(label) ? String(label[1]) : String(label))
     const count = [shape].flat().reduce((product, length) => product * length, 1)
+    if (!(count + fields.length <= mostChannels)) throw new RecordError('npy-shape', `The structured NPY array has more than ${mostChannels} fields. Save the record’s channels alone.`)
     for (let i = 0; i < count; i++) {
       const part = [shape].flat().length ? `${name}[${i}]` : name
       if (Array.isArray(code)) {

@@ -6,13 +6,15 @@ import type { RecordData, RecordOptions, RecordSeries, RecordTable } from './rec
 
 const evidenceRows = 64
 const sameRate = 1e-6
+/** Four GiB a channel: a header that claims more is damaged, or made to exhaust the memory. */
+const mostRows = 2 ** 30
 
 /**
  * Read the wanted channels of an opened record.
  *
  * Memory: four bytes a sample and wanted channel, and one block.
  *
- * @throws RecordError `too-short`, `no-illumination`, `unknown-column`, `ambiguous-columns`, `no-time`, `time-not-uniform`,
+ * @throws RecordError `too-short`, `too-long`, `no-illumination`, `unknown-column`, `ambiguous-columns`, `no-time`, `time-not-uniform`,
  * `not-a-number`, `sensitivity-not-volts`, `file-cut`
  */
 export async function readTable(table: RecordTable, options: RecordOptions): Promise<RecordData> {
@@ -24,6 +26,7 @@ export async function readTable(table: RecordTable, options: RecordOptions): Pro
   const plan = planRecord(columns, chosen, options, series.sampleRateHz, series.startSeconds, 'Sample')
   const { rows } = series
   if (rows < 2) throw new RecordError('too-short', `The record has ${rows === 1 ? 'one sample' : 'no samples'}. Upload a record with at least two samples.`)
+  if (rows > mostRows) throw new RecordError('too-long', `The record says that it has ${rows} samples a channel; at most ${mostRows} are read. Cut it into parts, or record at a lower rate.`)
   const data = plan.channels.map(() => new Float32Array(rows))
   let at = 0
   for await (const block of table.blocks(plan.wanted, 0, rows)) {

@@ -59,7 +59,7 @@ export function readUffHeader(lines: readonly string[], byte: number): UffHeader
   const form = numbers(lines[6] ?? '', [10, 10, 10, 13, 13, 13])
   const [ordinateType, count, spacing, firstAbscissa, step] = form
   if (!Number.isInteger(Number(functionType))) throw refuse(6, 'the function type and its nodes')
-  if (form.length < 5 || form.slice(0, 5).some(Number.isNaN) || ![2, 4, 5, 6].includes(ordinateType) || count < 0) throw refuse(7, 'data type, number of values, spacing, first abscissa and step')
+  if (form.length < 5 || form.slice(0, 5).some(Number.isNaN) || ![2, 4, 5, 6].includes(ordinateType) || !(Number.isInteger(count) && count >= 0)) throw refuse(7, 'data type, number of values, spacing, first abscissa and step')
   if (spacing !== 0 && !(step > 0)) throw refuse(7, 'a step above 0')
   return {
     title: text(lines[0] ?? ''), functionType: Number(functionType), dof: dofOf(Number(node), Number(direction)),

@@ -19,6 +19,7 @@ export interface UffContents {
 }
 
 const headerLines = 11
+const mostDatasets = 4096
 const ieee = 2
 const littleEndianOrder = 1
 const delimiter = /^\s*-1\s*$/
@@ -28,7 +29,7 @@ const delimiter = /^\s*-1\s*$/
  *
  * A data block in ASCII is stepped over by the length of its first line; where that does not lead to its end, line by line.
  *
- * @throws RecordError `uff-header`, `uff-float`, `file-cut`
+ * @throws RecordError `uff-header`, `uff-float`, `uff-too-many`, `file-cut`
  */
 export async function scanUff(source: RandomAccess): Promise<UffContents> {
   const reader = new LineReader(source)
@@ -42,6 +43,7 @@ export async function scanUff(source: RandomAccess): Promise<UffContents> {
     if (/^\s*58(?:b|\s|$)/i.test(kind.text)) {
       const dataset = await readDataset(reader, kind)
       contents.datasets.push(dataset)
+      if (contents.datasets.length > mostDatasets) throw new RecordError('uff-too-many', `The universal file holds more than ${mostDatasets} functions. Export the channels’ time histories alone.`)
       at = dataset.binary ? await afterBinary(source, dataset) : await afterText(reader, dataset)
     } else {
       if (/^\s*\d+/.test(kind.text)) contents.others.push(Number.parseInt(kind.text, 10))

@@ -90,6 +90,11 @@ describe('HDF5 record', () => {
     await expect(readRecord(memorySource(await hdf5Bytes(file => void file.create_dataset({ name: 'text', data: ['a', 'b'] }))))).rejects.toThrow(error('hdf5-empty', /only “text”/))
   })
 
+  it('that claims more samples than memory holds is refused before any is read', async () => {
+    const bytes = await hdf5Bytes(file => void file.create_dataset({ name: 'lamp', data: new Float32Array(10), shape: [10], maxshape: [null], chunks: [10] }).resize([5_000_000_000]))
+    await expect(readRecord(counted(bytes), { sampleRateHz: 10 })).rejects.toThrow(error('too-long', /5000000000 samples a channel/))
+  })
+
   it('cannot reach files beside it through links', async () => {
     const other = await hdf5Bytes((file) => {
       const group: Group = file.create_group('a')

@@ -110,6 +110,8 @@ describe('a file is refused', () => {
     ['that is an NPY of an image', memorySource(npyOf('<f4', '(5000, 6000)', 8)), 'npy-shape', /5000 channels/],
     ['that is an NPY cut off', memorySource(npyOf('<f4', '(30,)', 100)), 'file-cut', /ends at byte 228, but .* ends at byte 248/],
     ['that is an NPY with a damaged header', bytes('\x93NUMPY', 1, 0, 10, 0, '{\'descr\': ['), 'npy-header', /does not say type and shape/],
+    ['that is an NPY of a million fields', memorySource(npyOf('<f4', '(3,)', 8, '[(\'a\', \'<f4\', (1000000,))]')), 'npy-shape', /more than 4096 fields/],
+    ['that is an NPY whose data begin in nested brackets', memorySource(npyOf('', '(3,)', 8, '['.repeat(50_000))), 'npy-header', /does not say type/],
     ['whose NPY holds no numbers', floats([3], [1, Number.NaN, 3]), 'not-a-number', /Sample 1 of “channel 1” \(counted from 0\) is no number/],
     ['whose NPY holds one sample', floats([1], [1]), 'too-short', /one sample/],
   ] as [string, RandomAccess, string, RegExp][])('%s', async (_, source, code, message) => {
@@ -129,7 +131,7 @@ it('a rate that was given goes before the file’s own, and a difference is told
   expect(record.flags.find(({ code }) => code === 'sample-rate-differs')?.message).toMatch(/file says 48000 Hz/)
 })
 
-function npyOf(descr: string, shape: string, dataBytes: number): Uint8Array {
-  const header = `{'descr': '${descr}', 'fortran_order': False, 'shape': ${shape}, }`.padEnd(117) + '\n'
-  return Uint8Array.from([...Buffer.from('\x93NUMPY\x01\x00', 'latin1'), 118, 0, ...Buffer.from(header), ...new Uint8Array(dataBytes)])
+function npyOf(descr: string, shape: string, dataBytes: number, literal = `'${descr}'`): Uint8Array {
+  const header = `{'descr': ${literal}, 'fortran_order': False, 'shape': ${shape}, }`.padEnd(117) + '\n'
+  return Uint8Array.from([...Buffer.from('\x93NUMPY\x01\x00', 'latin1'), header.length & 0xff, header.length >> 8, ...Buffer.from(header), ...new Uint8Array(dataBytes)])
 }
