@@ -97,8 +97,10 @@ export class Attempt {
     return {
       payload,
       publish: async (transaction, result, keys) => {
-        await definition.publish?.(transaction, { situation, payload, result, keys, jobId: this.claim.jobId })
-        await writeOutput(transaction, stage, this.claim, key, result, keys)
+        // A copy: the stage may take files out, and the transaction may be tried again.
+        const own = { ...keys }
+        await definition.publish?.(transaction, { situation, payload, result, keys: own, jobId: this.claim.jobId })
+        await writeOutput(transaction, stage, this.claim, key, result, own)
         await advanceWithin(transaction, this.claim.acquisitionId)
       },
     }

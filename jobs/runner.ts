@@ -39,6 +39,15 @@ let stopping = false
 
 const log = (message: string, error?: unknown) => console.log(`${new Date().toISOString()} ${message}`, error ?? '')
 const pause = (milliseconds: number) => new Promise(resolve => setTimeout(resolve, milliseconds))
+/** A job that has just ended has often queued the next stage, so the claim loop does not sleep on. */
+let wake = () => {}
+const pauseUntilWoken = (milliseconds: number) => new Promise<void>((resolve) => {
+  const timer = setTimeout(resolve, milliseconds)
+  wake = () => {
+    clearTimeout(timer)
+    resolve()
+  }
+})
 
 /** Goes on through errors: a database that is away for a while must not end the runner. */
 function every(milliseconds: number, what: string, work: () => Promise<unknown>): NodeJS.Timeout {
@@ -85,7 +94,7 @@ async function claimLoop(context: ConstructorParameters<typeof Attempt>[0]): Pro
       return null
     })
     if (!claim) {
-      await pause(250)
+      await pauseUntilWoken(150)
       continue
     }
     const attempt = new Attempt(context, claim)
@@ -94,7 +103,10 @@ async function claimLoop(context: ConstructorParameters<typeof Attempt>[0]): Pro
     log(`${claim.stage} ${claim.jobId} attempt ${claim.attempt}`)
     void pool.add(() => attempt.execute())
       .catch(error => log(`${claim.stage} ${claim.jobId} could not be settled; its lease will run out`, error))
-      .finally(() => running.delete(claim.jobId))
+      .finally(() => {
+        running.delete(claim.jobId)
+        wake()
+      })
   }
 }
 

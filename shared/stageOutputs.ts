@@ -1,5 +1,5 @@
 /** What each stage leaves in `stage_outputs.facts` and which files it names; read by later stages, pages and manifests. */
-import type { AlignmentEvidence, ClipFacts } from './measurement'
+import type { AlignmentEvidence, ClipFacts, FrameLoss } from './measurement'
 import type { RecordFacts } from './records'
 import type { PipelineStage } from './states'
 
@@ -13,17 +13,35 @@ export interface SourceFile {
 }
 
 export interface StageFacts {
-  /** files: `frame-times` (NPY float64, clip seconds). */
+  /** files: `frame-times` (NPY float64, clip seconds), `frame-index` (where decoding can begin), `frame-bytes` (NPY float64, compressed size of each frame). */
   inspect: { source: SourceFile, clip: ClipFacts }
-  /** files: `meter` (NPZ: light float64, clipped float64, black float64, difference float64; one value a frame). */
-  meter: { frameCount: number, exposureSeconds: number, meanLight: number }
-  /** files: one per channel role, raw little-endian float32. */
+  /**
+   * files: `glance` (NPZ: light, clipped, black, difference, float64, one value a frame; NaN where not measured) and, once a
+   * stage has decoded the whole clip, `light` (the same of every frame).
+   */
+  meter: { frameCount: number, glanced: number, meanLight: number }
+  /** files: one per channel role, raw little-endian float32; `regimes` (JSON). */
   record: { source: SourceFile, record: RecordFacts, darkLevel: number | null }
-  /** files: `predicted` (NPY float64, predicted light of each frame in the unit of `meter.light`; NaN outside the record). */
-  align: { version: number, offsetSeconds: number, driftPpm: number, evidence: AlignmentEvidence | null }
-  cut: { version: number, alignmentVersion: number, lines: { line: number, frequencyHz: number, groups: number }[] }
-  /** files: `sum-<group id>`, raw little-endian uint32 [H,W]. */
-  sum: { cutListVersion: number, frameCount: number }
+  /**
+   * files: `predicted` (NPY float64, predicted light of each frame in the unit of the meter's light; NaN outside the
+   * record), `frame-times` (clip seconds, lost frames allowed for).
+   */
+  align: { version: number, offsetSeconds: number, driftPpm: number, evidence: AlignmentEvidence | null, from: 'glance' | 'all' | 'manual', losses: FrameLoss[] }
+  /** files: `groups` (JSON). */
+  cut: { version: number, manual: boolean, alignmentVersion: number, lines: { line: number, frequencyHz: number, groups: number }[] }
+  /**
+   * files: `sum-<group id>`, raw little-endian uint32 [H,W]; `groups`, `frame-times` and `predicted` as they are after the
+   * alignment was made anew with every frame.
+   */
+  sum: {
+    clipKey: string
+    cutListVersion: number
+    frameCount: number
+    /** The alignment was made anew with every frame's light. */
+    refined: boolean
+    alignment: { version: number, offsetSeconds: number, driftPpm: number, losses: FrameLoss[] }
+    spans: { id: string, firstFrame: number, frameCount: number }[]
+  }
   check: { frameSetIds: string[] }
 }
 

@@ -5,8 +5,10 @@ declare namespace WebAssembly {
     readonly buffer: ArrayBuffer
     grow(pages: number): number
   }
-  type Module = object
-  const Module: new (bytes: Uint8Array) => Module
+  class Module {
+    constructor(bytes: Uint8Array)
+    private readonly opaque: unknown
+  }
   class Instance {
     constructor(module: Module, imports: Record<string, Record<string, unknown>>)
     readonly exports: Record<string, unknown>

@@ -12,7 +12,7 @@ import { isCurrent, loadSituation } from './inputs'
 export function acceptCutList(database: Database, acquisitionId: string, groups: Group[], userId: string): Promise<number> {
   return withRetry(() => database.transaction(async (transaction) => {
     const situation = await loadSituation(transaction, acquisitionId, true)
-    if (!isCurrent(situation, 'align') || !isCurrent(situation, 'meter')) throw new LampsumError('not-ready', 'There is no accepted alignment yet. Accept one, then edit the cut list.')
+    if (!isCurrent(situation, 'align')) throw new LampsumError('not-ready', 'There is no accepted alignment yet. Accept one, then edit the cut list.')
     requireFrames(groups, (situation.outputs.meter!.facts as unknown as FactsOf<'meter'>).frameCount)
     const [newest] = await transaction.select({ version: cutLists.version }).from(cutLists).where(eq(cutLists.acquisitionId, acquisitionId)).orderBy(desc(cutLists.version)).limit(1)
     const version = (newest?.version ?? 0) + 1

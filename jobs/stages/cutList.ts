@@ -1,9 +1,10 @@
+import { readFile } from 'node:fs/promises'
+import type { FileStore } from '../../server/store/fileStore'
 import type { Group } from '../../shared/measurement'
 import type { Situation } from '../queue/inputs'
-import { StageError } from './stage'
+import { pathOf } from './inputs'
 
-/** The newest cut list: after the cut stage it is the one in force. */
-export function cutListOf(situation: Situation): { version: number, alignmentVersion: number, groups: Group[] } {
-  if (!situation.newestCutList) throw new StageError('output-missing', 'There is no cut list. Run the cut stage again.')
-  return situation.newestCutList
+/** The groups as they were summed. */
+export async function cutListOf(situation: Situation, store: FileStore): Promise<Group[]> {
+  return JSON.parse(await readFile(pathOf(situation, store, 'sum', 'groups'), 'utf8')) as Group[]
 }

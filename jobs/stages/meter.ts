@@ -1,43 +1,44 @@
-import { writeFile } from 'node:fs/promises'
 import { join } from 'node:path'
-import type { ClipFacts } from '../../shared/measurement'
-import { writeNpz } from '../formats/npz'
-import { meterFrame } from '../imaging/accumulate'
-import { countsPerWhite, createLightTable } from '../media/transfer'
-import { factsOf } from './inputs'
-import { decodeClip } from './decode'
+import { readKeyFrames } from '../media/keyFrames'
+import { planGlance } from '../signal/glance'
+import { planChangeGlance } from '../signal/glanceWindows'
+import { clipPathsOf, openClip, type ClipPaths } from './clipSource'
+import { decodeRanges } from './decode'
+import { pathOf, readFloat64 } from './inputs'
+import { emptyLight, writeLight } from './lightFile'
 import { defineStage } from './stage'
+import { kernelFor, lightSink } from './sumFiles'
 
 interface Payload {
-  path: string
-  clip: ClipFacts
+  source: ClipPaths
+  frameTimes: string
+  frameBytes: string
 }
 
-/** Measures the light of every frame: mean, clipped and black share, change from the frame before. */
+/**
+ * Measures the light of as many frames as the alignment needs: key frames, and a few windows of frames in a row. Every
+ * frame is measured by the sum stage, which decodes the clip anyway.
+ */
 export const meter = defineStage<Payload>({
-  load(situation, store) {
-    const { source, clip } = factsOf(situation, 'inspect')
-    return { path: store.localPath(source.fileKey), clip }
-  },
+  load: (situation, store) => ({ source: clipPathsOf(situation, store), frameTimes: pathOf(situation, store, 'inspect', 'frame-times'), frameBytes: pathOf(situation, store, 'inspect', 'frame-bytes') }),
 
-  async run({ path, clip }, helpers) {
-    const table = createLightTable(clip.transfer, clip.range, clip.bitDepth)
-    const pixels = clip.width * clip.height
-    const light = new Float64Array(clip.frameCount)
-    const clipped = new Float64Array(clip.frameCount)
-    const black = new Float64Array(clip.frameCount)
-    const difference = new Float64Array(clip.frameCount)
-    const frameCount = await decodeClip(path, clip, helpers, (luma, index) => {
-      const frame = meterFrame(luma, table)
-      light[index] = frame.counts / pixels / countsPerWhite
-      clipped[index] = frame.clipped / pixels
-      black[index] = frame.black / pixels
-      difference[index] = index ? light[index]! - light[index - 1]! : 0
-    })
-    const meanLight = light.reduce((sum, value) => sum + value, 0) / frameCount
-    const file = join(helpers.workDir, 'meter.npz')
-    const column = (data: Float64Array) => ({ dtype: 'float64' as const, shape: [frameCount], data })
-    await writeFile(file, writeNpz({ light: column(light), clipped: column(clipped), black: column(black), difference: column(difference) }))
-    return { state: 'done', message: `${frameCount} frames, mean light ${(100 * meanLight).toFixed(1)} % of white.`, facts: { frameCount, meanLight }, files: { meter: file }, flags: [] }
+  async run({ source: paths, frameTimes, frameBytes }, helpers) {
+    const source = await openClip(paths)
+    const { clip, path, index } = source
+    const light = emptyLight(clip.frameCount)
+    const plan = planChangeGlance({ frameCount: clip.frameCount, keyFrames: index.entryFrames, packetBytes: await readFloat64(frameBytes) })
+      ?? planGlance({ frameTimesSeconds: await readFloat64(frameTimes), keyFrames: index.entryFrames })
+    const sink = lightSink(kernelFor(clip), light)
+    if (plan.useKeyFrames) {
+      await readKeyFrames(path, clip, index, { signal: helpers.signal, target: frame => sink.slot(frame) }, (_, frame) => sink.push(frame))
+      sink.finish()
+    }
+    await decodeRanges(path, clip, index, plan.windows, helpers, sink)
+    sink.finish()
+    const file = join(helpers.workDir, 'glance.npz')
+    await writeLight(file, light)
+    const measured = light.light.filter(Number.isFinite)
+    const meanLight = measured.reduce((sum, value) => sum + value, 0) / measured.length
+    return { state: 'done', message: `A glance at ${measured.length} of ${clip.frameCount} frames, mean light ${(100 * meanLight).toFixed(1)} % of white.`, facts: { frameCount: clip.frameCount, glanced: measured.length, meanLight }, files: { glance: file }, flags: [] }
   },
 })

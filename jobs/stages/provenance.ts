@@ -1,5 +1,5 @@
 import { version } from '../../package.json'
-import type { ClipFacts } from '../../shared/measurement'
+import type { ClipFacts, FrameLoss } from '../../shared/measurement'
 import type { ChannelMapping } from '../../shared/records'
 import { stageVersions, type Situation } from '../queue/inputs'
 import { exposureOf, factsOf } from './inputs'
@@ -11,15 +11,15 @@ export interface Provenance {
   settings: { transfer: string, range: string, frameExposureSeconds: number, guardSeconds: number, millimetresPerPixel: number | null, plan: unknown, channels: ChannelMapping | null }
   clip: ClipFacts
   record: { sampleRateHz: number, darkLevel: number | null }
-  alignment: { version: number, offsetSeconds: number, driftPpm: number }
+  alignment: { version: number, offsetSeconds: number, driftPpm: number, losses: FrameLoss[] }
   cutListVersion: number
 }
 
-export function provenanceOf(situation: Situation, cutListVersion: number): Provenance {
+export function provenanceOf(situation: Situation): Provenance {
   const { acquisition } = situation
   const inspect = factsOf(situation, 'inspect')
   const record = factsOf(situation, 'record')
-  const { version: alignmentVersion, offsetSeconds, driftPpm } = factsOf(situation, 'align')
+  const { alignment, cutListVersion } = factsOf(situation, 'sum')
   const input = (kind: 'clip' | 'record', { filename, bytes, sha256 }: typeof inspect.source) => ({ kind, filename, bytes, sha256 })
   return {
     program: { version, stages: stageVersions },
@@ -30,7 +30,7 @@ export function provenanceOf(situation: Situation, cutListVersion: number): Prov
     },
     clip: inspect.clip,
     record: { sampleRateHz: record.record.sampleRateHz, darkLevel: record.darkLevel },
-    alignment: { version: alignmentVersion, offsetSeconds, driftPpm },
+    alignment,
     cutListVersion,
   }
 }

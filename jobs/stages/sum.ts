@@ -1,52 +1,168 @@
-import { writeFile } from 'node:fs/promises'
+import { mkdir, readFile, writeFile } from 'node:fs/promises'
 import { join } from 'node:path'
-import type { ClipFacts, Group } from '../../shared/measurement'
-import { addFrame, assertSummable } from '../imaging/accumulate'
-import { createLightTable } from '../media/transfer'
-import { cutListOf } from './cutList'
-import { decodeClip } from './decode'
-import { factsOf } from './inputs'
-import { defineStage } from './stage'
+import type { FileStore } from '../../server/store/fileStore'
+import type { FrameLoss, Group, PlanLine } from '../../shared/measurement'
+import type { FactsOf } from '../../shared/stageOutputs'
+import type { Situation } from '../queue/inputs'
+import { lossFlags, outsideFlags, writeTimes } from './align'
+import { publishAlignment, type FoundAlignment } from './alignments'
+import { clipPathsOf, openClip, type ClipPaths } from './clipSource'
+import { publishCutList } from './cut'
+import { exposureOf, factsOf, pathOf, readFloat32, readFloat64 } from './inputs'
+import { keepLight } from './keepLight'
+import { emptyLight, readLightFile, writeLight } from './lightFile'
+import type { RecordRegimes } from './record'
+import { refineWithAllLight, type Refined } from './refine'
+import { defineStage, type StageHelpers, type StageResult } from './stage'
+import { kernelFor, makeSums, type SumFile } from './sumFiles'
 
 interface Payload {
-  path: string
-  clip: ClipFacts
+  source: ClipPaths
+  /** Names the clip as it was read: sums of the same clip can be built upon. */
+  clipKey: string
+  groups: string
   cutListVersion: number
+  manualCutList: boolean
+  alignment: { version: number, offsetSeconds: number, driftPpm: number, losses: FrameLoss[] }
+  /** Made from a glance: to be made anew with every frame's light. */
+  refine: boolean
+  light: string | null
+  bases: SumFile[]
+  frameTimes: { read: string, aligned: string }
+  predicted: string
+  illumination: string
+  regimes: string
+  sampleRateHz: number
+  darkLevel: number | null
+  exposureSeconds: number
+  guardSeconds: number
+  plan: PlanLine[]
+}
+
+interface Result extends StageResult {
   groups: Group[]
+  recut: boolean
+  alignment: FoundAlignment | null
 }
 
 export const sumFileName = (groupId: string) => `sum-${groupId}`
 
 /**
- * Adds every group's frames in linear light, exactly. Groups follow one another in the clip, so one image is in
- * memory at a time; each is written when its last frame has been added.
+ * Adds every group's frames in linear light, exactly, and measures every frame on the way: the one decoding of the
+ * whole clip. With all the light the alignment is made anew and the cut corrected; then, and whenever the cut list
+ * changes later, only frames that changed sides are decoded.
  */
-export const sum = defineStage<Payload>({
+export const sum = defineStage<Payload, Result>({
   load(situation, store) {
-    const { source, clip } = factsOf(situation, 'inspect')
-    const { version, groups } = cutListOf(situation)
-    return { path: store.localPath(source.fileKey), clip, cutListVersion: version, groups }
+    const { record, darkLevel } = factsOf(situation, 'record')
+    const { version, manual } = factsOf(situation, 'cut')
+    const { from, ...alignment } = factsOf(situation, 'align')
+    const meter = situation.outputs.meter!
+    return {
+      source: clipPathsOf(situation, store),
+      clipKey: situation.outputs.inspect!.outputKey,
+      groups: pathOf(situation, store, 'cut', 'groups'),
+      cutListVersion: version,
+      manualCutList: manual,
+      alignment: { version: alignment.version, offsetSeconds: alignment.offsetSeconds, driftPpm: alignment.driftPpm, losses: alignment.losses },
+      refine: from === 'glance',
+      light: meter.files.light ? pathOf(situation, store, 'meter', 'light') : null,
+      bases: basesOf(situation, store),
+      frameTimes: { read: pathOf(situation, store, 'inspect', 'frame-times'), aligned: pathOf(situation, store, 'align', 'frame-times') },
+      predicted: pathOf(situation, store, 'align', 'predicted'),
+      illumination: pathOf(situation, store, 'record', 'illumination'),
+      regimes: pathOf(situation, store, 'record', 'regimes'),
+      sampleRateHz: record.sampleRateHz, darkLevel,
+      exposureSeconds: exposureOf(situation),
+      guardSeconds: situation.acquisition.guardSeconds,
+      plan: situation.acquisition.plan,
+    }
   },
 
-  async run({ path, clip, cutListVersion, groups }, helpers) {
-    const table = createLightTable(clip.transfer, clip.range, clip.bitDepth)
-    const pixels = clip.width * clip.height
+  async run(payload, helpers) {
+    const source = await openClip(payload.source)
+    const kernel = kernelFor(source.clip)
+    const proposed = JSON.parse(await readFile(payload.groups, 'utf8')) as Group[]
     const files: Record<string, string> = {}
-    for (const group of groups) assertSummable(group.frameCount)
-    const open = new Map<Group, Uint32Array>()
-    const pending = groups.filter(group => group.frameCount > 0).sort((a, b) => a.firstFrame - b.firstFrame)
-    const frameCount = await decodeClip(path, clip, helpers, async (luma, index) => {
-      while (pending[0] && pending[0].firstFrame === index) open.set(pending.shift()!, new Uint32Array(pixels))
-      for (const [group, image] of open) {
-        addFrame(image, luma, table)
-        if (index < group.firstFrame + group.frameCount - 1) continue
-        open.delete(group)
-        const name = sumFileName(group.id)
-        files[name] = join(helpers.workDir, name)
-        await writeFile(files[name], new Uint8Array(image.buffer))
-      }
-    })
+    const decodeAll = !payload.light || !payload.bases.length
+    const light = decodeAll ? emptyLight(source.clip.frameCount) : await readLightFile(payload.light!)
+    let made = await makeSums({ source, kernel, groups: proposed, bases: payload.bases, folder: await folderIn(helpers, 'sums'), ...decodeAll ? { light } : {} }, helpers)
+    let decoded = made.frames
+    if (decodeAll && !payload.light) await writeLight(files.light = join(helpers.workDir, 'light.npz'), light)
+
+    const refined = payload.refine ? await refine(payload, light.light, proposed) : null
+    const groups = refined?.groups ?? proposed
+    const recut = JSON.stringify(groups) !== JSON.stringify(proposed)
+    if (recut) {
+      made = await makeSums({ source, kernel, groups, bases: [...made.sums.values()], folder: await folderIn(helpers, 'corrected') }, helpers)
+      decoded += made.frames
+    }
+    for (const [id, { path }] of made.sums) files[sumFileName(id)] = path
+    Object.assign(files, await writeTiming(payload, refined, groups, helpers.workDir))
+    const timing = refined?.alignment ?? payload.alignment
     const used = groups.reduce((total, group) => total + group.frameCount, 0)
-    return { state: 'done', message: `${groups.length} groups, ${used} of ${frameCount} frames added.`, facts: { cutListVersion, frameCount }, files, flags: [] }
+    helpers.log(`${decoded} frames decoded for ${groups.length} sums.`)
+    return {
+      state: refined && !refined.sure ? 'needs review' : 'done',
+      message: refined && !refined.sure
+        ? `With every frame measured, the alignment is no longer sure. ${refined.alignment.evidence.reasons[0] ?? ''} Accept or correct it on the acquisition.`
+        : `${groups.length} groups, ${used} of ${source.clip.frameCount} frames added.`,
+      facts: {
+        clipKey: payload.clipKey, cutListVersion: payload.cutListVersion, frameCount: source.clip.frameCount, refined: refined !== null,
+        // A refined alignment gets its version when it is published.
+        alignment: { version: refined ? 0 : timing.version, offsetSeconds: timing.offsetSeconds, driftPpm: timing.driftPpm, losses: timing.losses },
+        spans: groups.map(({ id, firstFrame, frameCount }) => ({ id, firstFrame, frameCount })),
+      },
+      files,
+      flags: refined ? [...outsideFlags(refined.alignment.predicted), ...lossFlags(refined.alignment.losses)].map(flag => ({ ...flag, stage: 'sum' })) : [],
+      groups, recut, alignment: refined?.alignment ?? null,
+    }
+  },
+
+  async publish(transaction, { situation, result, keys }) {
+    await keepLight(transaction, situation, keys)
+    const facts = result.facts as FactsOf<'sum'>
+    if (result.alignment) facts.alignment.version = await publishAlignment(transaction, situation.acquisition.id, foundBy(result.alignment), result.state === 'done')
+    if (result.recut) facts.cutListVersion = await publishCutList(transaction, situation.acquisition.id, facts.alignment.version, result.groups)
   },
 })
+
+const foundBy = ({ offsetSeconds, driftPpm, residual, confidence, evidence }: FoundAlignment): FoundAlignment => ({ offsetSeconds, driftPpm, residual, confidence, evidence })
+
+/** Sums that an earlier run left of the same clip. */
+function basesOf({ outputs }: Situation, store: FileStore): SumFile[] {
+  const facts = outputs.sum?.facts as unknown as Partial<FactsOf<'sum'>> | undefined
+  if (!facts?.spans || facts.clipKey !== outputs.inspect!.outputKey) return []
+  return facts.spans.flatMap(({ id, firstFrame, frameCount }) => {
+    const key = outputs.sum!.files[sumFileName(id)]
+    return key ? [{ path: store.localPath(key), firstFrame, frameCount }] : []
+  })
+}
+
+async function refine(payload: Payload, frameLight: Float64Array, groups: Group[]): Promise<Refined> {
+  const { regimes } = JSON.parse(await readFile(payload.regimes, 'utf8')) as RecordRegimes
+  const { sampleRateHz, darkLevel, exposureSeconds, guardSeconds, plan, alignment, manualCutList } = payload
+  return refineWithAllLight({
+    frameLight, frameTimesSeconds: await readFloat64(payload.frameTimes.read), illumination: await readFloat32(payload.illumination),
+    exposureSeconds, sampleRateHz, darkLevel, previous: alignment, regimes, guardSeconds, plan, groups, keepGroups: manualCutList,
+  })
+}
+
+/** What the check stage and the pages read of the timing in force. */
+async function writeTiming({ frameTimes, predicted }: Payload, refined: Refined | null, groups: Group[], workDir: string): Promise<Record<string, string>> {
+  const files = { 'groups': join(workDir, 'groups.json'), 'frame-times': join(workDir, 'frame-times.npy'), 'predicted': join(workDir, 'predicted.npy') }
+  await writeFile(files.groups, JSON.stringify(groups))
+  await writeFile(files['frame-times'], await readFile(frameTimes.aligned))
+  await writeFile(files.predicted, await readFile(predicted))
+  if (refined) {
+    await writeTimes(files['frame-times'], refined.frameTimesSeconds)
+    await writeTimes(files.predicted, refined.alignment.predicted)
+  }
+  return files
+}
+
+async function folderIn({ workDir }: StageHelpers, name: string): Promise<string> {
+  const folder = join(workDir, name)
+  await mkdir(folder, { recursive: true })
+  return folder
+}

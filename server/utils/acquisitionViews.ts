@@ -31,9 +31,10 @@ export async function getAcquisition(database: Database, id: string): Promise<Ac
   }
 }
 
-/** Flags of every output that stands, or that somebody still has to decide on. */
+/** Flags of every output that stands, or that somebody still has to decide on. Once every frame is measured, the sum stage speaks for the alignment. */
 function flagsOf(situation: Situation): Flag[] {
-  return pipelineStages.flatMap((stage) => {
+  const aligned = (situation.outputs.sum?.facts as FactsOf<'sum'> | undefined)?.refined && isCurrent(situation, 'sum')
+  return pipelineStages.filter(stage => stage !== 'align' || !aligned).flatMap((stage) => {
     const output = situation.outputs[stage]
     if (!output || (output.inputsKey && !isCurrent(situation, stage))) return []
     return output.flags.map(flag => ({ ...flag, stage: flag.stage ?? stage }))

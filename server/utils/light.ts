@@ -14,16 +14,18 @@ const predictedFiles = recentlyUsed<Float64Array>(8)
 
 /** Measured and predicted light of the frames `from` … `to` − 1, as means over at most `columns` columns. */
 export async function readLight(database: Database, store: FileStore, acquisitionId: string, { from, to, columns }: { from?: number, to?: number, columns: number }): Promise<Light> {
-  const outputs = await database.select().from(stageOutputs).where(and(eq(stageOutputs.acquisitionId, acquisitionId), inArray(stageOutputs.stage, ['meter', 'align'])))
-  const meterKey = outputs.find(output => output.stage === 'meter')?.files.meter
-  const predictedKey = outputs.find(output => output.stage === 'align')?.files.predicted
+  const outputs = await database.select().from(stageOutputs).where(and(eq(stageOutputs.acquisitionId, acquisitionId), inArray(stageOutputs.stage, ['meter', 'align', 'sum'])))
+  const meter = outputs.find(output => output.stage === 'meter')?.files
+  const meterKey = meter?.light ?? meter?.glance
+  // The sum stage aligns anew with every frame; whichever spoke last is in force.
+  const predictedKey = outputs.filter(output => output.files.predicted).sort((a, b) => b.createdAt.getTime() - a.createdAt.getTime())[0]?.files.predicted
   if (!meterKey) throw new LampsumError('not-found', 'The light of the frames has not been measured yet. It is when the clip has been read.')
   const measured = await measuredFiles(meterKey, async () => readNpz(await buffer(store.openRange(meterKey))).light!.data as Float64Array)
   const predicted = predictedKey ? await predictedFiles(predictedKey, async () => readNpy(await buffer(store.openRange(predictedKey))).data as Float64Array) : null
   return averageLight(measured, predicted?.length === measured.length ? predicted : null, { from: from ?? 0, to: to ?? measured.length, columns })
 }
 
-/** `frames` holds the first frame of each column. Frames outside the record have no prediction (null). */
+/** `frames` holds the first frame of each column. Frames not yet measured have no light, frames outside the record no prediction (null). */
 export function averageLight(measured: Float64Array, predicted: Float64Array | null, { from, to, columns }: { from: number, to: number, columns: number }): Light {
   const first = Math.min(from, measured.length)
   const end = Math.max(first, Math.min(to, measured.length))
@@ -32,7 +34,7 @@ export function averageLight(measured: Float64Array, predicted: Float64Array | n
   const means = (values: Float64Array) => edges.slice(0, -1).map((edge, column) => meanOf(values, edge, edges[column + 1]!))
   return {
     frames: edges.slice(0, -1),
-    measured: count ? means(measured).map(value => value ?? 0) : [],
+    measured: count ? means(measured) : [],
     predicted: predicted && (count ? means(predicted) : []),
   }
 }
