@@ -5,7 +5,7 @@ import { evaluateAt, polish, type Polished } from './alignPolish'
 import { median, offsetOf, type AlignProblem } from './alignProblem'
 import { searchAlignment } from './alignSearch'
 import { correctFrameTimes } from './frameLoss'
-import { findLosses, timingDisagrees, type FoundLosses } from './frameLossSearch'
+import { disagreeingBlocks, findLosses, type FoundLosses } from './frameLossSearch'
 import { lampTones } from './lampTones'
 import { createLightIntegrals, predictFrameLight } from './lightPrediction'
 
@@ -113,9 +113,10 @@ function conclude(input: AlignInput, problem: AlignProblem, found: Found | null,
     const reason = 'The light of the clip and the lamp signal have nothing in common; check that clip, record and channel belong together, or set offset and drift by hand.'
     return unjudged(input, { offsetSeconds: 0, driftPpm: 0, method: 'light', version: 1 }, reason)
   }
-  const lost = !problem.sparse && timingDisagrees(problem, found.best) ? findLosses(problem, found.best) : null
+  const blocks = problem.sparse ? { late: 0, odd: 0 } : disagreeingBlocks(problem, found.best)
+  const lost = blocks.odd >= 2 ? findLosses(problem, found.best) : null
   if (lost) return reportLosses(input, lost)
-  const first = report(input, problem, found)
+  const first = doubtTiming(report(input, problem, found), blocks.late)
   if (problem.sparse) {
     first.contenders = found.contenders?.map(solution => ({ offsetSeconds: offsetOf(solution), driftPpm: solution.driftPpm, gain: solution.gain, background: solution.background }))
     return first
@@ -133,6 +134,14 @@ function conclude(input: AlignInput, problem: AlignProblem, found: Found | null,
   return second
 }
 
+/** No confidence in an alignment that parts of the clip contradict. */
+function doubtTiming(result: AlignResult, lateBlocks: number): AlignResult {
+  if (lateBlocks < 2) return result
+  result.confidence = Math.min(result.confidence, 0.4)
+  result.evidence.reasons.push(`${lateBlocks} stretches of the clip want another timing than the whole, and no lost or doubled frames explain it; look at the difference of measured and predicted light.`)
+  return result
+}
+
 function reportLosses(input: AlignInput, lost: FoundLosses): AlignResult {
   const losses = lost.losses.map(loss => ({ ...loss, frame: lost.problem.frames[loss.frame], uncertainFrames: lost.problem.frames[loss.frame] - lost.problem.frames[loss.frame - loss.uncertainFrames] }))
   const corrected = { ...input, frameTimesSeconds: correctFrameTimes(input.frameTimesSeconds, losses) }
@@ -144,7 +153,7 @@ function reportLosses(input: AlignInput, lost: FoundLosses): AlignResult {
     const where = uncertainFrames > 0 ? `somewhere between frames ${frame - uncertainFrames - 1} and ${frame}` : `right before frame ${frame}`
     result.evidence.reasons.push(`By the light, ${what} ${where}, though the timestamps run on; later frames are timed anew.`)
   }
-  return result
+  return doubtTiming(result, disagreeingBlocks(lost.problem, lost.solution).late)
 }
 
 /**

@@ -1,7 +1,7 @@
 import type { FrameLoss } from '../../shared/measurement'
 import { errorsOf } from './alignConfidence'
 import { polish, type Polished } from './alignPolish'
-import { median, offsetOf, type AlignProblem, type AlignSolution } from './alignProblem'
+import { explained, median, offsetOf, type AlignProblem, type AlignSolution } from './alignProblem'
 import { searchAlignment } from './alignSearch'
 import { correctFrameTimes } from './frameLoss'
 import { shiftPath } from './frameLossPath'
@@ -15,21 +15,24 @@ export interface FoundLosses {
 }
 
 /** Largest gap looked for, frames. */
-const mostLostFrames = 75
+const mostLostFrames = 60
 /** Frames of a block that is asked for its own timing. */
 const blockFrames = 25
 /** More losses than one in so many seconds are none: clip and record are of different shots. */
 const fewestSecondsEach = 12
+/** Cost of a frame that a shift moves out of the record: what one that fits costs too, and less than a step for the largest gap. */
+const outsideNats = 0.6
 /** Fractions of a frame by which a loss may differ from whole frames and still be whole. */
 const wholeTolerance = 0.06
 
 /**
- * Whether parts of the clip want another timing than the whole: two blocks of 25 frames off by 0.1 frame with certainty, or
- * with errors far above those of the rest.
+ * Blocks of 25 frames that do not agree with the whole: `late` ones are off by 0.1 frame with certainty, `odd` ones are that
+ * or have errors far above those of the rest (which a flash or a bump of light has too).
  */
-export function timingDisagrees(problem: AlignProblem, solution: Polished): boolean {
+export function disagreeingBlocks(problem: AlignProblem, solution: Polished): { late: number, odd: number } {
   const errors = errorsOf(problem, solution)
   const noise = noiseOf(problem, errors)
+  let late = 0
   let odd = 0
   for (let from = 0; from + blockFrames <= errors.length; from += blockFrames) {
     let products = 0, slopes = 0, squares = 0, frames = 0
@@ -42,10 +45,11 @@ export function timingDisagrees(problem: AlignProblem, solution: Polished): bool
       frames++
     }
     const shift = Math.abs(products / slopes)
-    const late = shift > 0.1 && shift > 8 * noise / Math.sqrt(slopes)
-    if (late || squares > 25 * noise ** 2 * frames) odd++
+    const isLate = shift > 0.1 && shift > 8 * noise / Math.sqrt(slopes)
+    if (isLate) late++
+    if (isLate || squares > 25 * noise ** 2 * frames) odd++
   }
-  return odd >= 2
+  return { late, odd }
 }
 
 function slopeAt(problem: AlignProblem, solution: AlignSolution, time: number): number {
@@ -75,7 +79,7 @@ export function findLosses(problem: AlignProblem, whole: Polished): FoundLosses 
     if (foundCost >= cost) continue
     best = found
     cost = foundCost
-    if (!timingDisagrees(found.problem, found.solution)) return best
+    if (disagreeingBlocks(found.problem, found.solution).odd < 2) return best
   }
   return best
 }
@@ -85,39 +89,48 @@ function fitCost(problem: AlignProblem, solution: Polished): number {
   return problem.light.length * Math.log(solution.squares / solution.frames + 1e-5 * problem.lightVariance + Number.MIN_VALUE)
 }
 
-/** The whole clip's solution, then those of its thirds. */
+/** The whole clip's solution, then those of parts of it, the best explained ones first: some part has no loss in it. */
 function* starts(problem: AlignProblem, whole: Polished): Generator<{ solution: AlignSolution, noise: number }> {
   yield { solution: whole, noise: noiseOf(problem, errorsOf(problem, whole)) }
-  const frames = problem.times.length
-  const parts = Math.max(2, Math.min(3, Math.floor(problem.times[frames - 1] / 15)))
-  for (let part = 0; part < parts; part++) {
-    let from = Math.floor(part * frames / parts)
-    let to = Math.floor((part + 1) * frames / parts)
-    const most = Math.round(60 / problem.frameSeconds)
-    if (to - from > most) {
-      from = Math.floor((from + to - most) / 2)
-      to = from + most
-    }
-    const origin = problem.times[from]
-    const piece = { ...problem, light: problem.light.slice(from, to), times: problem.times.slice(from, to).map(time => time - origin) }
-    const found = searchAlignment(piece)?.best
-    if (!found) continue
-    yield { solution: { ...found, pivotSeconds: found.pivotSeconds + origin }, noise: noiseOf(piece, errorsOf(piece, found)) }
-  }
+  const seconds = problem.times[problem.times.length - 1]
+  const partFrames = Math.round(Math.min(30, Math.max(10, seconds / 5)) / problem.frameSeconds)
+  const parts = Math.max(2, Math.min(8, Math.floor(1.5 * problem.times.length / partFrames)))
+  const found = Array.from({ length: parts }, (_, part) => alignPart(problem, Math.floor(part * (problem.times.length - partFrames) / (parts - 1)), partFrames))
+  for (const { solution, noise } of found.filter(part => part !== null).sort((x, y) => y.score - x.score).slice(0, 4)) yield { solution, noise }
+}
+
+function alignPart(problem: AlignProblem, from: number, frames: number): { solution: AlignSolution, noise: number, score: number } | null {
+  const to = Math.min(problem.times.length, from + frames)
+  if (from < 0 || to - from < 50) return null
+  const origin = problem.times[from]
+  const light = problem.light.slice(from, to)
+  const mean = light.reduce((sum, value) => sum + value / light.length, 0)
+  const lightVariance = light.reduce((sum, value) => sum + (value - mean) ** 2 / light.length, 0)
+  const piece = { ...problem, light, lightVariance, times: problem.times.slice(from, to).map(time => time - origin) }
+  const best = searchAlignment(piece)?.best
+  if (!best) return null
+  return { solution: { ...best, pivotSeconds: best.pivotSeconds + origin }, noise: Math.max(noiseOf(piece, errorsOf(piece, best)), 0.003 * Math.sqrt(problem.lightVariance)), score: explained(piece, best) }
 }
 
 /** Shifts and fit in turn, until the shifts stay. */
-function follow(problem: AlignProblem, start: AlignSolution, noise: number): FoundLosses | null {
+function follow(problem: AlignProblem, start: AlignSolution, startNoise: number): FoundLosses | null {
   const { frameSeconds, times, light, integrals, exposureSeconds } = problem
   let current: AlignSolution = start
+  let noise = startNoise
   let result: FoundLosses | null = null
   let before = ''
   for (let pass = 0; pass < 5; pass++) {
     const offset = offsetOf(current)
     const rate = 1 + current.driftPpm * 1e-6
     const { gain, background } = current
-    const misfit = (k: number, shift: number) => (light[k] - background - gain * windowMean(integrals, offset + rate * (times[k] + shift * frameSeconds), exposureSeconds)) ** 2 / (2 * noise * noise)
-    const path = shiftPath(misfit, times.length, Math.min(mostLostFrames, times.length >> 2))
+    const misfit = (k: number, shift: number) => (light[k] - background - gain * windowMean(integrals, offset + rate * (times[k] + shift * frameSeconds), exposureSeconds)) ** 2 / (3 * noise * noise)
+    // Where the clip runs beyond the record nothing is known; a shift that only leaves the record is no explanation.
+    const inside = times.map((_, k) => misfit(k, 0))
+    const known = (k: number, shift: number) => {
+      const value = shift === 0 ? inside[k] : Number.isNaN(inside[k]) ? Number.NaN : misfit(k, shift)
+      return Number.isNaN(value) && !Number.isNaN(inside[k]) ? outsideNats : value
+    }
+    const path = shiftPath(known, times.length, Math.min(mostLostFrames, times.length >> 2))
     if (path.steps.length > 1 + (times[times.length - 1] - times[0]) / fewestSecondsEach) return null
     let shift = path.first
     const losses = path.steps.map((step) => {
@@ -133,6 +146,7 @@ function follow(problem: AlignProblem, start: AlignSolution, noise: number): Fou
     if (now === before && path.first === 0) break
     before = now
     current = solution
+    noise = Math.min(noise, noiseOf(corrected, errorsOf(corrected, solution)))
   }
   return result && withFractions(problem, result)
 }
@@ -140,7 +154,7 @@ function follow(problem: AlignProblem, start: AlignSolution, noise: number): Fou
 /** Sizes measured on both sides of a loss; those that are whole frames within tolerance stay so. */
 function withFractions(problem: AlignProblem, found: FoundLosses): FoundLosses {
   const bounds = [0, ...found.losses.map(loss => loss.frame), problem.times.length]
-  const shifts = bounds.slice(1).map((to, s) => blockShift(found.problem, found.solution, bounds[s] + 0, to - (found.losses[s]?.uncertainFrames ?? 0)))
+  const shifts = bounds.slice(1).map((to, s) => blockShift(found.problem, found.solution, bounds[s], to - (found.losses[s]?.uncertainFrames ?? 0)))
   let changed = false
   const losses = found.losses.map((loss, s) => {
     const shift = shifts[s + 1].shift - shifts[s].shift

@@ -11,6 +11,8 @@ export interface AlignFigures {
   unsure: number
   /** Cases that miss 0.01 frame or 3 ppm and do not say so. */
   silent: number
+  /** Frame losses named, where none is in any take. */
+  losses: number
 }
 
 export const largestOffsetFrames = 0.01
@@ -22,7 +24,7 @@ export const largestDriftPpm = 3
  */
 export function alignFigures(cases = 100, firstSeed = 1, onCase: (line: string) => void = () => {}): AlignFigures {
   const offsets: number[] = []
-  const figures = { cases, worstOffsetFrames: 0, worstDriftPpm: 0, medianOffsetFrames: 0, unsure: 0, silent: 0 }
+  const figures = { cases, worstOffsetFrames: 0, worstDriftPpm: 0, medianOffsetFrames: 0, unsure: 0, silent: 0, losses: 0 }
   for (let seed = firstSeed; seed < firstSeed + cases; seed++) {
     const take = drawTake(seed, { seconds: [20, 60] })
     const started = performance.now()
@@ -32,6 +34,7 @@ export function alignFigures(cases = 100, firstSeed = 1, onCase: (line: string) 
     const missed = !(offsetFrames <= largestOffsetFrames && driftPpm <= largestDriftPpm)
     const sure = found.confidence >= alignmentReviewBelow
     onCase(`${seed} ${missed ? 'MISS' : 'ok'} ${sure ? 'sure' : 'unsure'} conf ${found.confidence.toFixed(2)} off ${offsetFrames.toFixed(4)} fr, drift ${driftPpm.toFixed(2)} ppm; true ${take.offsetSeconds.toFixed(3)} s ${take.driftPpm.toFixed(0)} ppm, ${take.frameLight.length} frames at ${take.frameRateHz.toFixed(2)}; ${(performance.now() - started).toFixed(0)} ms${sure && !missed ? '' : ` | ${found.evidence.reasons.join(' ')}`}`)
+    figures.losses += found.losses.length
     if (!sure) {
       figures.unsure++
       continue
