@@ -1,7 +1,11 @@
 const kept = 6
 
-/** One image of a frame set as raw values; the last few stay in memory, so that going back and forth is instant. */
-export function useFrameSetImage(frameSetId: string, name: Ref<string>) {
+/**
+ * One image of a frame set as raw values; the last few stay in memory, so that going back and forth is instant.
+ *
+ * @param version changes when the set has been solved again: what is shown is then read anew
+ */
+export function useFrameSetImage(frameSetId: string, name: Ref<string>, version: () => string | undefined = () => undefined) {
   const image = shallowRef<RawImage | null>(null)
   const shown = ref<string | null>(null)
   const cache = new Map<string, RawImage>()
@@ -18,7 +22,8 @@ export function useFrameSetImage(frameSetId: string, name: Ref<string>) {
     image.value = result
     shown.value = wanted
   })
-  onMounted(() => watch(name, async (wanted) => {
+  onMounted(() => watch([name, version], async ([wanted], [, before]) => {
+    if (before !== undefined && before !== version()) cache.clear()
     while (load.busy.value) await new Promise(resolve => setTimeout(resolve, 20))
     if (name.value === wanted) await load.run(wanted)
   }, { immediate: true }))

@@ -5,7 +5,7 @@ import { LampsumError } from '#shared/errors'
 import type { Database } from '../db/client'
 import type { FileStore } from '../store/fileStore'
 import type { Download } from './fileDownload'
-import { findFrameSetFile } from './frameSetFiles'
+import { cachingOf, findFrameSetFile } from './frameSetFiles'
 import { recentlyUsed } from './recentlyUsed'
 
 const solvedImages = ['scene', 'p', 'q', 'noise']
@@ -13,7 +13,7 @@ const directories = recentlyUsed<NpzReader>(50)
 
 /** One image out of frameset.npz: a solved one by its name, or a group's sums by the group's id. Only its own bytes are read. */
 export async function frameSetImage(database: Database, store: FileStore, frameSetId: string, name: string): Promise<Download> {
-  const { file, groups } = await findFrameSetFile(database, frameSetId, 'frameset.npz')
+  const { file, state, groups } = await findFrameSetFile(database, frameSetId, 'frameset.npz')
   const npz = await directories(file.fileKey, () => openNpz(file.bytes, (offset, length) => readRange(store, file.fileKey, offset, length)))
   const solved = solvedImages.includes(name)
   const index = solved ? 0 : groups.findIndex(group => group.id === name)
@@ -25,7 +25,7 @@ export async function frameSetImage(database: Database, store: FileStore, frameS
   const start = array.dataOffset + index * bytes
   return {
     bytes, contentType: 'application/octet-stream', tag: `${file.sha256}-${encodeURIComponent(name)}`,
-    headers: { 'x-lampsum-shape': `${rows},${columns}`, 'x-lampsum-type': array.dtype },
+    headers: { ...cachingOf(state), 'x-lampsum-shape': `${rows},${columns}`, 'x-lampsum-type': array.dtype },
     open: range => store.openRange(file.fileKey, { start: start + range.start, end: start + range.end }),
   }
 }

@@ -108,9 +108,15 @@ describe('downloading a file', () => {
     expect(status).toBe(200)
     expect(body.equals(content)).toBe(true)
     expect(headers).toMatchObject({
-      'etag': `"${hash}"`, 'accept-ranges': 'bytes', 'content-length': '300000', 'cache-control': 'private, max-age=31536000, immutable',
+      'etag': `"${hash}"`, 'accept-ranges': 'bytes', 'content-length': '300000', 'cache-control': 'private, no-cache',
       'repr-digest': `sha-256=:${createHash('sha256').update(content).digest('base64')}:`, 'content-disposition': 'attachment; filename="acquisition-14-line-1-manifest.json"',
     })
+  })
+
+  it('may be kept by a browser for good only once the set is released, as a draft can be solved again', async () => {
+    const released = await insertSet({ state: 'released', releasedAt: new Date(), supersededAt: new Date(), acquisitionId: await insertAcquisition(handle.database, campaign, analyst.id) })
+    await insertFile(released, 'manifest.json', content)
+    expect((await get(`/files/${released}/manifest.json`)).headers['cache-control']).toBe('private, max-age=31536000, immutable')
   })
 
   it('goes on where a broken download stopped, and starts afresh when the file is another', async () => {
