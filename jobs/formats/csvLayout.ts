@@ -22,11 +22,15 @@ export const delimiters = ['\t', ';', ',', '|', blanks]
 export const delimiterNames: Record<string, string> = { '\t': 'tabs', ';': 'semicolons', ',': 'commas', '|': 'bars', [blanks]: 'blanks', '': 'nothing' }
 /** What loggers write where an input was overloaded. */
 export const overload = /^"?[-+]?\s*(?:ovl|ovld|ol|ovr|over(?:load|flow|range)?|1\.?#inf\w*|inf(?:inity)?|∞|clip(?:ped)?)"?$/i
+/** "10:00:01.250", "2024-05-01T10:00:01Z", "01.05.2024 10:00:01", or the date alone. */
+const clock = /^"?(?:\d{1,4}[-/.]\d{1,2}[-/.]\d{1,4})?[T ]*(?:\d{1,2}:\d{2}(?::\d{2}(?:[.,]\d+)?)?\s*(?:[AP]M|Z|[+-]\d{2}:?\d{2})?)?"?$/i
+/** The expressions below are for titles; what is longer is none. */
+const longestHeader = 400
 const quote = 60
 
 /**
  * Find out how a DAQ text file is laid out: what separates its columns, where its numbers begin, what its columns are
- * called. Numbers begin at the first line of two or more columns that are all numbers or empty, when the line after it is so too;
+ * called. Numbers begin at the first line of two or more columns that are all numbers, clock times or empty, when the line after it is so too;
  * whatever lies before is preamble, its last line the header, or the last but one when a row of units follows.
  *
  * @param lines the file's beginning, without line ends; the last one must be whole
@@ -42,7 +46,7 @@ export function findCsvLayout(lines: readonly string[]): CsvLayout {
     return { delimiter, columnCount, headerLines, ...readHeader(preamble, delimiter, columnCount), sampleRateHz: statedRate(preamble) }
   }
   const shown = lines.find(line => line.trim()) ?? ''
-  throw new RecordError('no-data', `No rows of numbers were found; the first line reads “${shown.slice(0, quote)}”. Export the record as CSV or TSV with one row a sample; a time column must hold seconds, not clock times.`)
+  throw new RecordError('no-data', `No rows of numbers were found; the first line reads “${shown.slice(0, quote)}”. Export the record as CSV or TSV with one row a sample.`)
 }
 
 /** A delimiter at the end of rows opens no column, unless the header has a name for it. */
@@ -89,11 +93,13 @@ function numericColumns(line: string, delimiter: string): number {
   const bytes = new TextEncoder()
   const values = cells.map((cell) => {
     const text = bytes.encode(cell)
-    return cell.trim() === '' || /^\s*"?nan"?\s*$/i.test(cell) || overload.test(cell.trim()) ? null : scanNumber(text, 0, text.length)
+    return cell.trim() === '' || /^\s*"?nan"?\s*$/i.test(cell) || overload.test(cell.trim()) || isClock(cell) ? null : scanNumber(text, 0, text.length)
   })
   const numbers = values.filter(value => value !== null)
   return numbers.length && !numbers.some(Number.isNaN) ? cells.length : 0
 }
+
+export const isClock = (cell: string): boolean => /\d/.test(cell) && clock.test(cell.trim())
 
 function readHeader(preamble: readonly string[], delimiter: string, columnCount: number): Pick<CsvLayout, 'headers' | 'names' | 'units'> {
   const [last, before] = preamble.filter(line => line.trim()).reverse().map(line => headerCells(line, delimiter, columnCount))
@@ -123,7 +129,7 @@ function splitHeader(line: string, delimiter: string): string[] {
 
 /** "Sample rate: 51200 Hz", "Sampling frequency;51,2;kHz". */
 function statedRate(preamble: readonly string[]): number | null {
-  for (const line of preamble) {
+  for (const line of preamble.filter(({ length }) => length <= longestHeader)) {
     const [, number, kilo] = /(?:sampl\w*[\s_-]*(?:rate|freq\w*)|abtastrate|\bfs\b)[^\d]{0,20}?(\d+(?:[.,]\d+)?(?:e[+-]?\d+)?)[\s;,"[(]*(k?)(?:Hz|S\/s|$)?/i.exec(line) ?? []
     const rate = number ? Number(number.replace(',', '.')) * (kilo ? 1e3 : 1) : 0
     if (rate > 0) return rate
@@ -137,6 +143,7 @@ const isUnit = (text: string) => unitPattern.test(bare(text))
 
 /** "Force [N]", "Force (N)" or "Force / N". */
 export function splitUnit(header: string): { name: string, unit: string | null } {
+  if (header.length > longestHeader) return { name: header, unit: null }
   const [, name, bracketed, slashed] = /^(.*\S)\s*(?:[[(]([^\])]*)[\])]|\s\/\s+(\S+))$/.exec(header) ?? []
   return name === undefined ? { name: header, unit: null } : { name, unit: bracketed?.trim() || slashed || null }
 }

@@ -1,3 +1,4 @@
+import { splitUnit } from './csvLayout'
 import { columnBlocks, fieldGetter, type ColumnPlace, type FieldType } from './fields'
 import { latin1, readExactly, viewOf, type RandomAccess } from './randomAccess'
 import { parsePythonLiteral, type PythonLiteral } from './pythonLiteral'
@@ -80,14 +81,9 @@ function structuredLayout(descr: PythonLiteral, shape: number[], dataOffset: num
   if (shape.length !== 1) throw new RecordError('npy-shape', `The structured NPY array has ${shape.length} dimensions. Save it with one, the samples.`)
   const known = fields.flatMap(field => typeOf(field.code) ? [{ ...field, type: typeOf(field.code)! }] : [])
   if (!known.length) throw unknownType(fields.map(({ code }) => code).join(', '))
-  const columns = known.map(({ name }, index) => ({ index, header: name, ...splitName(name) }))
+  const columns = known.map(({ name }, index) => ({ index, header: name, ...splitUnit(name) }))
   const places = known.map(({ type, offset }) => ({ type, offset: dataOffset + offset, strideBytes: itemBytes }))
   return { rows: shape[0], columns, places, text: `${known.length} fields`, dataEnd: dataOffset + shape[0] * itemBytes }
-}
-
-const splitName = (text: string) => {
-  const [, name, unit] = /^(.*\S)\s*[[(]([^\])]*)[\])]$/.exec(text) ?? []
-  return { name: name ?? text, unit: unit?.trim() || null }
 }
 
 /** Fields of a structured type with their offsets; nested ones are named "outer.inner", parts of arrays "name[0]". */

@@ -1,9 +1,9 @@
 import type { Flag } from '../../shared/measurement'
 import { readCsvHead, type CsvHead } from './csvHead'
-import { blanks, delimiterNames } from './csvLayout'
+import { blanks, delimiterNames, isClock } from './csvLayout'
 import { CsvRows, type RowsEnd } from './csvRows'
 import { GrowingFloat32 } from './growingFloat32'
-import { chooseColumns } from './recordColumns'
+import { chooseColumns, type ChosenColumns } from './recordColumns'
 import { RecordError } from './recordError'
 import { planRecord, type RecordPlan } from './recordSink'
 import type { RecordChannel, RecordData, RecordOptions } from './recordTable'
@@ -23,14 +23,14 @@ const evidenceRows = 64
  *
  * @param bytes the file in pieces of any size; UTF-8, Latin-1 or UTF-16
  * @throws RecordError: `empty`, `no-data`, `ambiguous-delimiter`, `too-short` (fewer than two rows), `no-illumination`,
- * `unknown-column`, `ambiguous-columns`, `no-time`, `not-a-number`, `overload`, `column-missing`, `time-not-uniform`,
+ * `unknown-column`, `ambiguous-columns`, `no-time`, `clock-times`, `not-a-number`, `overload`, `column-missing`, `time-not-uniform`,
  * `sensitivity-not-volts`
  */
 export async function readCsvRecord(bytes: AsyncIterable<Uint8Array>, options: RecordOptions = {}): Promise<RecordData> {
   const source = asUtf8(bytes)
   const head = await readCsvHead(source)
   const { layout, columns } = head
-  const chosen = chooseColumns(columns, options.columns ?? {}, firstCsvRows(head, evidenceRows))
+  const chosen = chooseCsvColumns(head, options, firstCsvRows(head, evidenceRows))
   const plan = planRecord(columns, chosen, options, chosen.columns.time === undefined ? layout.sampleRateHz : null, 0, 'Line')
   const sink = new Sink(plan)
   const rows = new CsvRows(layout, plan.wanted, sink.add)
@@ -45,16 +45,36 @@ export async function readCsvRecord(bytes: AsyncIterable<Uint8Array>, options: R
   }
 }
 
-/** "CSV, semicolons". */
+/**
+ * `chooseColumns`, but a time column of clock times gives way to a sample rate: such times have too few digits for a fast record.
+ *
+ * @throws RecordError `clock-times` when there is no rate either, and as `chooseColumns`
+ */
+export function chooseCsvColumns({ layout, lines, columns }: CsvHead, { columns: asked = {}, sampleRateHz }: RecordOptions, first: readonly Float64Array[]): ChosenColumns {
+  const chosen = chooseColumns(columns, asked, first)
+  const { time, ...channels } = chosen.columns
+  const cell = time === undefined ? '' : splitRow(lines[layout.headerLines], layout.delimiter)[time] ?? ''
+  if (time === undefined || !isClock(cell)) return chosen
+  const name = columns[time].header || columns[time].name
+  if (sampleRateHz === undefined && layout.sampleRateHz === null) throw new RecordError('clock-times', `Line ${layout.headerLines + 1}, column “${name}” holds a clock time, “${cell.trim()}”; seconds were expected. Give the sample rate in Hz, or export the time in seconds.`)
+  return { columns: channels, flags: [...chosen.flags, { code: 'clock-times', severity: 'note', message: `“${name}” holds clock times and was not used; the sample rate of ${sampleRateHz ?? layout.sampleRateHz} Hz stands. Check that the record has no gaps.` }] }
+}
+
+/** "Text, 3 columns, semicolons". */
 export function describeCsv({ layout: { delimiter, columnCount } }: CsvHead): string {
   return delimiter ? `Text, ${columnCount} columns, ${delimiterNames[delimiter]}` : 'Text, one column'
 }
 
 /** The first values of every column; NaN where there is no number. */
 export function firstCsvRows({ layout, columns, lines }: CsvHead, count: number): Float64Array[] {
-  const cells = lines.slice(layout.headerLines).filter(line => line.trim()).slice(0, count).map(line => layout.delimiter === blanks ? line.trim().split(/[ \t]+/) : layout.delimiter ? line.split(layout.delimiter) : [line])
+  const cells = lines.slice(layout.headerLines).filter(line => line.trim()).slice(0, count).map(line => splitRow(line, layout.delimiter))
   const number = (text: string | undefined) => text?.trim() ? Number(text.replace(/"/g, '').replace(',', '.')) : Number.NaN
   return columns.map(({ index }) => Float64Array.from(cells, row => number(row[index])))
+}
+
+function splitRow(line: string, delimiter: string): string[] {
+  if (delimiter === blanks) return line.trim().split(/[ \t]+/)
+  return delimiter ? line.split(delimiter) : [line]
 }
 
 function endFlags({ cutLine, footer }: RowsEnd): Flag[] {

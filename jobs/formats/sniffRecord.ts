@@ -4,7 +4,7 @@ import { readCsvHead } from './csvHead'
 import { openRecord } from './openRecord'
 import { chunksOf, memorySource, type RandomAccess } from './randomAccess'
 import { chooseColumns, guessColumns, type ChosenColumns, type ColumnGuess } from './recordColumns'
-import { describeCsv, firstCsvRows } from './recordCsv'
+import { chooseCsvColumns, describeCsv, firstCsvRows } from './recordCsv'
 import { RecordError } from './recordError'
 import { planRecord } from './recordSink'
 import type { RecordColumn, RecordOptions, RecordSeries } from './recordTable'
@@ -33,6 +33,7 @@ interface Facts extends Pick<RecordSniff, 'format' | 'description' | 'rows' | 'r
   first: Float64Array[]
   /** Length, rate and start of the chosen columns together. */
   series: (chosen: ChosenColumns['columns']) => RecordSeries
+  choose: (options: RecordOptions) => ChosenColumns
 }
 
 const defaultRows = 200
@@ -56,9 +57,9 @@ export async function sniffRecord(source: RandomAccess, { filename, previewRows 
 }
 
 /** Length and rate with the guesses, or what stands in their way. */
-function judge({ format, columns, first, series }: Facts, options: RecordOptions): Partial<RecordSniff> {
+function judge({ format, columns, first, series, choose }: Facts, options: RecordOptions): Partial<RecordSniff> {
   try {
-    const chosen = chooseColumns(columns, options.columns ?? {}, first)
+    const chosen = choose(options)
     const common = series(chosen.columns)
     // In text a time column goes before what the preamble says.
     const fileRateHz = format === 'csv' && chosen.columns.time !== undefined ? null : common.sampleRateHz
@@ -77,7 +78,11 @@ async function findFacts(source: RandomAccess, filename: string | undefined, pre
   if (table === 'csv') return csvFacts(source, previewRows)
   try {
     const { format, description, columns, rows, sampleRateHz, flags } = table
-    return { format, description, columns, rows, rowsAreExact: true, sampleRateHz, flags, first: await firstRows(table, previewRows), series: chosen => commonSeries(table, chosen) }
+    const first = await firstRows(table, previewRows)
+    return {
+      format, description, columns, rows, rowsAreExact: true, sampleRateHz, flags, first,
+      series: chosen => commonSeries(table, chosen), choose: options => chooseColumns(columns, options.columns ?? {}, first),
+    }
   } finally {
     table.close?.()
   }
@@ -93,5 +98,9 @@ async function csvFacts(source: RandomAccess, previewRows: number): Promise<Fact
   const rowBytes = lineBytes * characters(dataLines) / characters(lines) / dataLines.length
   const isWhole = head.isWhole && chunk.length === source.size
   const rows = dataLines.length + (isWhole ? 0 : Math.round((source.size / bytesPerCharacter - lineBytes) / rowBytes))
-  return { format: 'csv', description: describeCsv(head), columns: head.columns, first: firstCsvRows(head, previewRows), sampleRateHz, flags: [], rows, rowsAreExact: isWhole, series: () => ({ rows, sampleRateHz, startSeconds: 0 }) }
+  const first = firstCsvRows(head, previewRows)
+  return {
+    format: 'csv', description: describeCsv(head), columns: head.columns, first, sampleRateHz, flags: [], rows, rowsAreExact: isWhole,
+    series: () => ({ rows, sampleRateHz, startSeconds: 0 }), choose: options => chooseCsvColumns(head, options, first),
+  }
 }

@@ -131,6 +131,12 @@ describe('CSV record', () => {
     }
   })
 
+  it.each(['10:00:0#.250', '2024-05-01T10:00:0#Z', '01.05.2024 10:00:0#', '5/1/2024 10:00:0# PM'])('passes over a column of clock times like %s when the rate is given', async (time) => {
+    const record = await read(`time;light\n${Array.from({ length: 9 }, (_, i) => `${time.replace('#', String(i))};${i}`).join('\n')}\n`, { sampleRateHz: 1 })
+    expect(values(record).illumination).toEqual([0, 1, 2, 3, 4, 5, 6, 7, 8])
+    expect(codes(record)).toContain('clock-times')
+  })
+
   it('leaves a footer out, and says so', async () => {
     const record = await read('t;light\n0;1\n1;2\n2;3\n\nEnd of record\nSamples;3\n')
     expect(values(record).illumination).toEqual([1, 2, 3])
@@ -156,7 +162,7 @@ describe('a CSV record is refused', () => {
   it.each([
     ['that is empty', '', {}, 'empty', /Upload the file again/],
     ['that is prose', 'Measured on Tuesday.\nIt rained.\n', {}, 'no-data', /first line reads “Measured on Tuesday\.”/],
-    ['with clock times', 'time;light\n10:00:01;1\n10:00:02;2\n', {}, 'no-data', /not clock times/],
+    ['with clock times', 'time;light\n10:00:01;1\n10:00:02;2\n', {}, 'clock-times', /Line 2, column “time” holds a clock time, “10:00:01”.*sample rate in Hz/],
     ['with one row', 't,light\n0,1\n', {}, 'too-short', /one row/],
     ['without an illumination column', 't,force\n0,1\n1,2\n', {}, 'no-illumination', /Its columns are “t”, “force”/],
     ['without header and mapping', '0;1\n1;2\n', {}, 'no-illumination', /2 columns have no header/],
