@@ -4,7 +4,7 @@ export interface RegimeCells {
   count: number
   mean: Float64Array
   deviation: Float64Array
-  /** 95th percentile of the cells' absolute means: the size of "lit" in this record. */
+  /** The cells' absolute mean that a twentieth of them, at most three, exceed: the size of "lit", also in a long dark record. */
   scale: number
 }
 
@@ -30,5 +30,5 @@ export function computeCells(illumination: Float32Array, samplesPerCell: number)
     deviation[cell] = Math.sqrt(Math.max(0, squares / samplesPerCell - average * average))
   }
   const sorted = mean.map(Math.abs).sort()
-  return { samplesPerCell, count, mean, deviation, scale: sorted[Math.floor(0.95 * (count - 1))] ?? 0 }
+  return { samplesPerCell, count, mean, deviation, scale: sorted[Math.max(Math.floor(0.95 * (count - 1)), count - 4)] ?? 0 }
 }

@@ -65,7 +65,7 @@ function seed(search: Search, cell: number): LampRun | null {
   const steady = Math.abs(cells.mean[cell + 1] - cells.mean[cell]) < 0.02 * cells.scale
   const dim = Math.abs(cells.mean[cell]) < 0.1 * cells.scale
   const quiet = dim
-    ? rough < 0.04 * cells.scale || (rough < 0.15 * cells.scale && !hasTone(search, cell, constantSeedCells, 0.06 * cells.scale))
+    ? rough < 0.04 * cells.scale || (rough < 0.3 * cells.scale && !hasTone(search, cell, constantSeedCells, 0.06 * cells.scale))
     : rough < 0.06 * level || (rough < 0.3 * level && !hasTone(search, cell, constantSeedCells, leastDepth * level))
   return steady && quiet ? { kind: 'constant', firstCell: cell, endCell: cell + constantSeedCells, frequencyHz: null } : null
 }

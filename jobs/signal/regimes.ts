@@ -2,6 +2,7 @@ import type { Flag, Regime } from '../../shared/measurement'
 import { decimateStretch } from './decimate'
 import { findLineFrequencies } from './lineFrequency'
 import { refineBoundaries, type LampStretch } from './regimeBoundaries'
+import { findMains, lampBesideMains } from './regimeMains'
 import { removeTones } from './removeTones'
 import { findRuns } from './regimeRuns'
 import { fitSine3, wrapDegrees, type SineFit } from './sineFit'
@@ -123,10 +124,12 @@ function toRegime(samples: Float32Array, sampleRateHz: number, entry: Fitted, co
 /** Frequency, phase and amplitude from the stretch without ripple, level and residual from the stretch as it is. */
 function fitStretches(samples: Float32Array, sampleRateHz: number, stretches: LampStretch[], planned: number[]): Fitted[] {
   const harmonic = stretches.filter(stretch => stretch.kind === 'harmonic')
+  const mains = findMains(samples, sampleRateHz, stretches.filter(stretch => stretch.kind === 'constant'))
   const parts = harmonic.map((stretch) => {
     const guessHz = stretch.frequencyHz!
-    const part = decimateStretch(samples, sampleRateHz, { first: stretch.first, count: stretch.end - stretch.first }, guessHz)
-    return { ...part, samples: removeTones(part.samples, part.sampleRateHz, guessHz), guessHz }
+    const raw = decimateStretch(samples, sampleRateHz, { first: stretch.first, count: stretch.end - stretch.first }, guessHz)
+    const { part, guessHz: lampHz } = lampBesideMains(raw, guessHz, mains)
+    return { ...part, samples: removeTones(part.samples, part.sampleRateHz, lampHz), guessHz: lampHz }
   })
   const fits = new Map<LampStretch, SineFit>()
   for (const line of findLineFrequencies(parts, planned)) {
