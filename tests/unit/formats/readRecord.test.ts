@@ -29,6 +29,11 @@ describe('a record', () => {
     expect(keys(csv.columns[0]).slice(0, 4)).toEqual(['header', 'index', 'name', 'unit'])
   })
 
+  it('of many blocks keeps every sample in its place', async () => {
+    const { channels } = await readRecord(floats([300_000, 2], Array.from({ length: 600_000 }, (_, i) => i)), { columns: { illumination: 1 }, sampleRateHz: 5 })
+    expect(channels[0].data.findIndex((value, i) => value !== 2 * i + 1)).toBe(-1)
+  })
+
   it('of a single channel takes it as illumination, and says so', async () => {
     const record = await readRecord(memorySource(wavFile({ samples: [[0.5, -0.5]] })))
     expect(record.channels.map(({ role }) => role)).toEqual(['illumination'])

@@ -67,6 +67,23 @@ describe('universal file', () => {
     expect(Array.from((await read(new TextEncoder().encode(wide))).channels[0].data)).toEqual(expected)
   })
 
+  it('whose numbers touch in some places of a line only is read', async () => {
+    const values = Array.from({ length: 50 }, (_, i) => (i % 3 === 2 ? -1e-5 : 1e-5) * (i + 1))
+    const text = new TextDecoder().decode(universalFile([lamp({ values })])).replaceAll(/[- ](\d)\.(\d{5})E-0(\d)/g, found => found.replace('E-', 'E-0')).replaceAll(/ ([ -]\d\.\d{5}E-00)/g, '$1')
+    expect(text).toContain('E-005-3.')
+    expect(Array.from((await read(new TextEncoder().encode(text))).channels[0].data)).toEqual(written(values, 5))
+  })
+
+  it('in free form, one number a line, is read with its abscissa', async () => {
+    const values = wave(100_000).map(value => Number(value.toExponential(5)))
+    const times = values.map((_value, i) => i / 8)
+    const [head] = new TextDecoder().decode(universalFile([lamp({ times, values })])).split(/(?<=\n.{9}0 {4}0 {4}0 {4}0 NONE {16} NONE {16}\n.*\n)/)
+    const bytes = new TextEncoder().encode(`${head}${values.map((value, i) => `${times[i]}\n${value}\n`).join('')}    -1\n`)
+    const record = await read(bytes)
+    expect(record).toMatchObject({ sampleRateHz: 8, rows: 100_000 })
+    expect(Array.from(record.channels[0].data)).toEqual(single(values))
+  })
+
   it('passes over datasets of other kinds and functions that are no time histories, and says so', async () => {
     const spectrum = force({ abscissaType: 18, functionType: 4, isComplex: true, values: wave(20) })
     const record = await read(universalFile([spectrum, lamp()], { before: units }))

@@ -27,6 +27,11 @@ describe('WAV record', () => {
     expect(codes(record)).toEqual(['wav-length'])
   })
 
+  it('whose stated length is zero is not fooled by samples that look like a chunk’s name', async () => {
+    const letters = Array.from({ length: 40 }, () => 0x4241 / 2 ** 15)
+    expect((await read(wavFile({ samples: [letters, letters], dataLength: 0 }))).rows).toBe(40)
+  })
+
   it('whose stated length is too short, with no chunk after it, is read to its end and flagged', async () => {
     const loud = [Array.from({ length: 40 }, () => -0.999), Array.from({ length: 40 }, () => -0.999)]
     const record = await read(wavFile({ samples: loud, dataLength: 16 }))

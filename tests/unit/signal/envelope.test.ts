@@ -51,6 +51,17 @@ describe('envelope of a channel', () => {
     }
   })
 
+  it('reaches from the very first to the very last sample that was asked', () => {
+    const data = Float32Array.from({ length: 5000 }, (_, i) => i)
+    const pyramid = buildPyramid(data)
+    for (let from = 0; from < 300; from += 7) {
+      for (let to = 4700; to <= 5000; to++) {
+        const { minimum, maximum } = envelope(pyramid, data, from, to, 3)
+        expect([minimum[0], maximum[2]]).toEqual([from, to - 1])
+      }
+    }
+  })
+
   it('covers just what was asked, in columns whose edges are moved by an eighth of a column at most', () => {
     const data = noise(300_000)
     const pyramid = buildPyramid(data)
