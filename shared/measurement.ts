@@ -39,6 +39,13 @@ export const planLineSchema = z.object({
 })
 export type PlanLine = z.infer<typeof planLineSchema>
 
+/** A part of the picture that sees the lamp itself (a diffuser, a white card). Pixels; the first row and column count 0. */
+export const lampPatchSchema = z.object({
+  left: z.number().int().min(0), top: z.number().int().min(0),
+  width: z.number().int().min(1), height: z.number().int().min(1),
+}, 'Give the lamp patch as four whole numbers in pixels: left, top, width, height.')
+export type LampPatch = z.infer<typeof lampPatchSchema>
+
 /** Facts of a clip's video stream, found by the inspect stage. */
 export const clipFactsSchema = z.object({
   container: z.string(),

@@ -16,7 +16,7 @@ export interface StageFacts {
   /** files: `frame-times` (NPY float64, clip seconds), `frame-index` (where decoding can begin), `frame-bytes` (NPY float64, compressed size of each frame). */
   inspect: { source: SourceFile, clip: ClipFacts }
   /**
-   * files: `glance` (NPZ: light, clipped, black, difference, float64, one value a frame; NaN where not measured) and, once a
+   * files: `glance` (NPZ: light, clipped, black, difference, float64, and patch where a lamp patch is set; one value a frame, NaN where not measured) and, once a
    * stage has decoded the whole clip, `light` (the same of every frame).
    */
   meter: { frameCount: number, glanced: number, meanLight: number }

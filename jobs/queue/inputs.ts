@@ -7,7 +7,7 @@ import type { FactsOf } from '../../shared/stageOutputs'
 import { pipeline, pipelineStages, type PipelineStage } from '../../shared/states'
 
 /** Raise a stage's number when its results change, and every acquisition's stage counts as stale. */
-export const stageVersions: Record<PipelineStage, number> = { inspect: 2, meter: 2, record: 1, align: 2, cut: 2, sum: 2, check: 2 }
+export const stageVersions: Record<PipelineStage, number> = { inspect: 2, meter: 2, record: 2, align: 2, cut: 2, sum: 2, check: 2 }
 
 export type StageOutput = typeof stageOutputs.$inferSelect
 export type AcquisitionRow = typeof acquisitions.$inferSelect
@@ -66,8 +66,8 @@ export function inputsKey(situation: Situation, stage: PipelineStage): string | 
   }
   const own = {
     inspect: () => clip && [clip.id, clip.sha256, acquisition.transfer, acquisition.range],
-    meter: () => [],
-    record: () => record && [record.id, record.sha256, acquisition.channels],
+    meter: () => [acquisition.lampPatch],
+    record: () => record && [record.id, record.sha256, acquisition.channels, plannedFrequencies(acquisition)],
     align: () => [acquisition.frameExposureSeconds, manualAlignment?.version ?? null],
     cut: () => [acquisition.plan, acquisition.guardSeconds, manualCutList && manualCutList.alignmentVersion === (outputs.align!.facts as unknown as FactsOf<'align'>).version ? manualCutList.version : null],
     sum: () => [],
@@ -75,6 +75,9 @@ export function inputsKey(situation: Situation, stage: PipelineStage): string | 
   }[stage]()
   return own && keyOf([stage, stageVersions[stage], upstream, own])
 }
+
+/** What the record stage takes from the plan: repetitions do not matter there. */
+export const plannedFrequencies = ({ plan }: Pick<AcquisitionRow, 'plan'>): number[] => [...new Set(plan.map(line => line.frequencyHz))].sort((a, b) => a - b)
 
 export function isCurrent(situation: Situation, stage: PipelineStage): boolean {
   const output = situation.outputs[stage]

@@ -11,9 +11,9 @@ import { clipPathsOf, openClip, type ClipPaths } from './clipSource'
 import { decodeClip } from './decode'
 import { exposureOf, factsOf, pathOf, readFloat32, readFloat64 } from './inputs'
 import { keepLight } from './keepLight'
-import { emptyLight, readLightFile, writeLight } from './lightFile'
+import { emptyLight, readLightFile, timingLight, writeLight } from './lightFile'
 import { defineStage, type StageHelpers, type StageResult } from './stage'
-import { kernelFor, lightSink } from './sumFiles'
+import { lightSink } from './sumFiles'
 
 interface Payload {
   source: ClipPaths
@@ -60,7 +60,7 @@ export const align = defineStage<Payload, Result>({
   async run(payload, helpers) {
     const { glance, light, frameTimes, illumination, sampleRateHz, darkLevel, exposureSeconds, manual } = payload
     const input: AlignInput = {
-      frameLight: (await readLightFile(manual && light ? light : glance)).light,
+      frameLight: timingLight(await readLightFile(manual && light ? light : glance)),
       frameTimesSeconds: await readFloat64(frameTimes),
       illumination: await readFloat32(illumination),
       exposureSeconds, sampleRateHz, darkLevel,
@@ -89,16 +89,16 @@ export const align = defineStage<Payload, Result>({
 
 /** Every frame's light: as it was measured before, or by decoding the clip now. */
 async function lightOfAll({ light, source }: Payload, helpers: StageHelpers, files: Record<string, string>): Promise<Float64Array> {
-  if (light) return (await readLightFile(light)).light
+  if (light) return timingLight(await readLightFile(light))
   helpers.log('The glance does not settle the alignment, so every frame is measured.')
-  const { path, clip } = await openClip(source)
-  const measured = emptyLight(clip.frameCount)
-  const sink = lightSink(kernelFor(clip), measured)
-  await decodeClip(path, clip, helpers, sink)
+  const opened = await openClip(source)
+  const measured = emptyLight(opened.clip.frameCount, opened.lampPatch !== null)
+  const sink = lightSink(opened, measured)
+  await decodeClip(opened.path, opened.clip, helpers, sink)
   sink.finish()
   files.light = join(helpers.workDir, 'light.npz')
   await writeLight(files.light, measured)
-  return measured.light
+  return timingLight(measured)
 }
 
 async function describeAlignment(found: AlignResult, input: AlignInput, from: 'manual' | 'glance' | 'all', manualVersion: number | null, workDir: string, files: Record<string, string>): Promise<Result> {

@@ -7,8 +7,8 @@ export interface SummerHooks<T extends FrameSpan, B extends FrameSpan> {
   read: (base: B) => Promise<Uint32Array>
   /** A sum is complete. The image is good until the promise settles. */
   write: (task: SumTask<T, B>, image: Uint32Array) => Promise<void>
-  /** Called for every frame when given; without it, frames are not measured. */
-  meter?: (frame: number, meter: FrameMeter) => void
+  /** Called for every frame, with its raw luma codes, when given; without it, frames are not measured. */
+  meter?: (frame: number, meter: FrameMeter, bytes: Uint8Array) => void
 }
 
 /**
@@ -74,7 +74,7 @@ export class FrameSummer<T extends FrameSpan, B extends FrameSpan> {
     if (!count) return
     if (this.plus.length || this.hooks.meter) {
       const meters = this.kernel.add(count, this.plus)
-      if (this.hooks.meter) for (const [k, frame] of this.batch.entries()) this.hooks.meter(frame, meters[k]!)
+      if (this.hooks.meter) for (const [k, frame] of this.batch.entries()) this.hooks.meter(frame, meters[k]!, this.kernel.slot(k))
     }
     for (const sum of this.minus) this.kernel.subtract(count, sum)
     this.batch = []

@@ -7,7 +7,7 @@ import { decodeRanges } from './decode'
 import { pathOf, readFloat64 } from './inputs'
 import { emptyLight, writeLight } from './lightFile'
 import { defineStage } from './stage'
-import { kernelFor, lightSink } from './sumFiles'
+import { lightSink } from './sumFiles'
 
 interface Payload {
   source: ClipPaths
@@ -25,10 +25,10 @@ export const meter = defineStage<Payload>({
   async run({ source: paths, frameTimes, frameBytes }, helpers) {
     const source = await openClip(paths)
     const { clip, path, index } = source
-    const light = emptyLight(clip.frameCount)
+    const light = emptyLight(clip.frameCount, source.lampPatch !== null)
     const plan = planChangeGlance({ frameCount: clip.frameCount, keyFrames: index.entryFrames, packetBytes: await readFloat64(frameBytes) })
       ?? planGlance({ frameTimesSeconds: await readFloat64(frameTimes), keyFrames: index.entryFrames })
-    const sink = lightSink(kernelFor(clip), light)
+    const sink = lightSink(source, light)
     if (plan.useKeyFrames) {
       await readKeyFrames(path, clip, index, { signal: helpers.signal, target: frame => sink.slot(frame) }, (_, frame) => sink.push(frame))
       sink.finish()

@@ -1,5 +1,5 @@
 import { version } from '../../package.json'
-import type { ClipFacts, FrameLoss } from '../../shared/measurement'
+import type { ClipFacts, FrameLoss, LampPatch } from '../../shared/measurement'
 import type { ChannelMapping } from '../../shared/records'
 import { stageVersions, type Situation } from '../queue/inputs'
 import { exposureOf, factsOf } from './inputs'
@@ -8,7 +8,7 @@ import { exposureOf, factsOf } from './inputs'
 export interface Provenance {
   program: { version: string, stages: Record<string, number> }
   inputs: { kind: 'clip' | 'record', filename: string, bytes: number, sha256: string }[]
-  settings: { transfer: string, range: string, frameExposureSeconds: number, guardSeconds: number, millimetresPerPixel: number | null, plan: unknown, channels: ChannelMapping | null }
+  settings: { transfer: string, range: string, frameExposureSeconds: number, guardSeconds: number, millimetresPerPixel: number | null, lampPatch: LampPatch | null, plan: unknown, channels: ChannelMapping | null }
   clip: ClipFacts
   record: { sampleRateHz: number, darkLevel: number | null }
   alignment: { version: number, offsetSeconds: number, driftPpm: number, losses: FrameLoss[] }
@@ -26,7 +26,7 @@ export function provenanceOf(situation: Situation): Provenance {
     inputs: [input('clip', inspect.source), input('record', record.source)],
     settings: {
       transfer: acquisition.transfer, range: acquisition.range, frameExposureSeconds: exposureOf(situation), guardSeconds: acquisition.guardSeconds,
-      millimetresPerPixel: acquisition.millimetresPerPixel, plan: acquisition.plan, channels: acquisition.channels,
+      millimetresPerPixel: acquisition.millimetresPerPixel, lampPatch: acquisition.lampPatch, plan: acquisition.plan, channels: acquisition.channels,
     },
     clip: inspect.clip,
     record: { sampleRateHz: record.record.sampleRateHz, darkLevel: record.darkLevel },

@@ -5,6 +5,7 @@ import type { Flag, Regime } from '../../shared/measurement'
 import type { ChannelMapping, RecordFacts } from '../../shared/records'
 import type { SourceFile } from '../../shared/stageOutputs'
 import { readCsvRecord, RecordError } from '../formats/recordCsv'
+import { plannedFrequencies } from '../queue/inputs'
 import { findRegimes } from '../signal/regimes'
 import { sourceOf } from './inputs'
 import { defineStage, StageError, type StageHelpers } from './stage'
@@ -13,6 +14,7 @@ interface Payload {
   source: SourceFile
   path: string
   mapping: ChannelMapping | null
+  plannedFrequenciesHz: number[]
 }
 
 /** What the illumination channel holds; kept beside the channels for the stages that cut. */
@@ -28,10 +30,10 @@ const mappingCodes = new Set(['no-illumination', 'unknown-column', 'no-time', 'a
 export const record = defineStage<Payload>({
   load({ record: upload, acquisition }, store) {
     const source = sourceOf(upload, 'record')
-    return { source, path: store.localPath(source.fileKey), mapping: acquisition.channels }
+    return { source, path: store.localPath(source.fileKey), mapping: acquisition.channels, plannedFrequenciesHz: plannedFrequencies(acquisition) }
   },
 
-  async run({ source, path, mapping }, helpers) {
+  async run({ source, path, mapping, plannedFrequenciesHz }, helpers) {
     const { channels, sampleRateHz, startSeconds, flags } = await read(path, source, mapping, helpers)
     const files: Record<string, string> = {}
     for (const channel of channels) {
@@ -39,7 +41,7 @@ export const record = defineStage<Payload>({
       await writeFile(files[channel.role]!, new Uint8Array(channel.data.buffer, channel.data.byteOffset, channel.data.byteLength))
     }
     const illumination = channels.find(channel => channel.role === 'illumination')!
-    const found = findRegimes(illumination.data, sampleRateHz)
+    const found = findRegimes(illumination.data, sampleRateHz, { plannedFrequenciesHz })
     files.regimes = join(helpers.workDir, 'regimes.json')
     await writeFile(files.regimes, JSON.stringify({ regimes: found.regimes, darkLevel: found.darkLevel } satisfies RecordRegimes))
     const facts: RecordFacts = {

@@ -10,7 +10,7 @@ import { clipPathsOf, openClip, type ClipPaths } from './clipSource'
 import { publishCutList } from './cut'
 import { exposureOf, factsOf, pathOf, readFloat32, readFloat64 } from './inputs'
 import { keepLight } from './keepLight'
-import { emptyLight, readLightFile, writeLight } from './lightFile'
+import { emptyLight, readLightFile, timingLight, writeLight } from './lightFile'
 import type { RecordRegimes } from './record'
 import { refineWithAllLight, type Refined } from './refine'
 import { defineStage, type StageHelpers, type StageResult } from './stage'
@@ -85,12 +85,12 @@ export const sum = defineStage<Payload, Result>({
     const proposed = JSON.parse(await readFile(payload.groups, 'utf8')) as Group[]
     const files: Record<string, string> = {}
     const decodeAll = !payload.light || !payload.bases.length
-    const light = decodeAll ? emptyLight(source.clip.frameCount) : await readLightFile(payload.light!)
+    const light = decodeAll ? emptyLight(source.clip.frameCount, source.lampPatch !== null) : await readLightFile(payload.light!)
     let made = await makeSums({ source, kernel, groups: proposed, bases: payload.bases, folder: await folderIn(helpers, 'sums'), ...decodeAll ? { light } : {} }, helpers)
     let decoded = made.frames
     if (decodeAll && !payload.light) await writeLight(files.light = join(helpers.workDir, 'light.npz'), light)
 
-    const refined = payload.refine ? await refine(payload, light.light, proposed) : null
+    const refined = payload.refine ? await refine(payload, timingLight(light), proposed) : null
     const groups = refined?.groups ?? proposed
     const recut = JSON.stringify(groups) !== JSON.stringify(proposed)
     if (recut) {

@@ -1,11 +1,11 @@
 import { copyFile, link, readFile, writeFile } from 'node:fs/promises'
 import { join } from 'node:path'
-import type { ClipFacts, Group } from '../../shared/measurement'
-import { assertSummable } from '../imaging/accumulate'
+import type { ClipFacts, Group, LampPatch } from '../../shared/measurement'
+import { assertSummable, meterFrame, type FrameMeter } from '../imaging/accumulate'
 import { framesNeeded, planSums, type FrameSpan, type SumTask } from '../imaging/sumPlan'
 import { LightKernel } from '../kernels/lightKernel'
 import type { FrameIndex } from '../media/frameIndex'
-import { createLightTable } from '../media/transfer'
+import { countsPerWhite, createLightTable } from '../media/transfer'
 import { decodeClip, decodeRanges, type FrameSink } from './decode'
 import { FrameSummer } from './frameSummer'
 import { setLight, type FrameLight } from './lightFile'
@@ -15,6 +15,8 @@ export interface ClipSource {
   path: string
   clip: ClipFacts
   index: FrameIndex
+  /** Part of the picture that sees the lamp itself. */
+  lampPatch: LampPatch | null
 }
 
 /** A sum that exists as a file: raw little-endian uint32, height × width. */
@@ -28,9 +30,21 @@ export function kernelFor({ transfer, range, bitDepth, width, height }: ClipFact
   return new LightKernel(width * height, createLightTable(transfer, range, bitDepth))
 }
 
+/** Puts what was measured of a frame into its place; the lamp patch is small enough for a plain loop. */
+function lightTaker({ clip, lampPatch }: ClipSource, light: FrameLight): (frame: number, meter: FrameMeter, bytes: Uint8Array) => void {
+  const table = createLightTable(clip.transfer, clip.range, clip.bitDepth)
+  return (frame, meter, bytes) => {
+    setLight(light, frame, meter)
+    if (!lampPatch || !light.patch) return
+    const luma = clip.bitDepth > 8 ? new Uint16Array(bytes.buffer, bytes.byteOffset, bytes.length / 2) : bytes
+    const { counts, pixels } = meterFrame(luma, table, { rectangle: lampPatch, frameWidth: clip.width })
+    light.patch[frame] = counts / pixels / countsPerWhite
+  }
+}
+
 /** A sink that measures frames and sums nothing. */
-export function lightSink(kernel: LightKernel, light: FrameLight): FrameSink & { finish: () => void } {
-  const summer = new FrameSummer(kernel, [], { read: unread, write: unread, meter: (frame, meter) => setLight(light, frame, meter) })
+export function lightSink(source: ClipSource, light: FrameLight): FrameSink & { finish: () => void } {
+  const summer = new FrameSummer(kernelFor(source.clip), [], { read: unread, write: unread, meter: lightTaker(source, light) })
   return { slot: frame => summer.slot(frame), push: frame => summer.push(frame), finish: () => summer.finish() }
 }
 
@@ -47,7 +61,8 @@ export interface SumRequest {
 }
 
 /** Makes every group's sum as a file in the folder, with the least decoding. Answers the files and the frames decoded. */
-export async function makeSums({ source: { path, clip, index }, kernel, groups, bases, light, folder }: SumRequest, helpers: StageHelpers): Promise<{ sums: Map<string, SumFile>, frames: number }> {
+export async function makeSums({ source, kernel, groups, bases, light, folder }: SumRequest, helpers: StageHelpers): Promise<{ sums: Map<string, SumFile>, frames: number }> {
+  const { path, clip, index } = source
   for (const group of groups) assertSummable(group.frameCount)
   const tasks = planSums(groups, light ? [] : bases)
   const sums = new Map<string, SumFile>()
@@ -60,7 +75,7 @@ export async function makeSums({ source: { path, clip, index }, kernel, groups, 
   const summer = new FrameSummer(kernel, tasks, {
     read: async base => wordsOf(await readFile(base.path)),
     write: (task, image) => writeFile(fileOf(task), new Uint8Array(image.buffer, image.byteOffset, image.byteLength)),
-    ...light ? { meter: (frame, meter) => setLight(light, frame, meter) } : {},
+    ...light ? { meter: lightTaker(source, light) } : {},
   })
   const sink: FrameSink = { slot: frame => summer.slot(frame), push: frame => summer.push(frame) }
   const needed = framesNeeded(tasks)

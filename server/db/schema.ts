@@ -3,7 +3,7 @@
  * Rows that processes fight over (jobs, uploads) are changed by single compare-and-set statements only.
  */
 import { bigint, boolean, customType, datetime, double, index, int, mysqlTable, primaryKey, text, uniqueIndex, varchar } from 'drizzle-orm/mysql-core'
-import type { AlignmentEvidence, CodeRange, Flag, Group, PlanLine, Transfer } from '../../shared/measurement'
+import type { AlignmentEvidence, CodeRange, Flag, Group, LampPatch, PlanLine, Transfer } from '../../shared/measurement'
 import type { Role } from '../../shared/permissions'
 import type { FrameSetState, JobState, PipelineStage, Stage, UploadState } from '../../shared/states'
 import type { CheckResult } from '../../shared/checks'
@@ -120,6 +120,7 @@ export const acquisitions = mysqlTable('acquisitions', {
   guardSeconds: double('guard_seconds').notNull(),
   plan: json<PlanLine[]>('plan').notNull(),
   autoRun: boolean('auto_run').notNull(),
+  lampPatch: json<LampPatch | null>('lamp_patch'),
   /** A person asked for the stages to run; with autoRun they run without being asked. */
   runRequestedAt: at('run_requested_at'),
   channels: json<ChannelMapping | null>('channels'),

@@ -21,10 +21,10 @@ export async function getAcquisition(database: Database, id: string): Promise<Ac
     loadSituations(database, [row.acquisition]), listSets(database, id), findAlignment(database, id), listUploadsOf(database, id),
   ])
   const situation = situations.get(id)!
-  const { notes, cameraProfileId, frameExposureSeconds, transfer, range, millimetresPerPixel, plan, guardSeconds, autoRun, channels } = row.acquisition
+  const { notes, cameraProfileId, frameExposureSeconds, transfer, range, millimetresPerPixel, plan, guardSeconds, autoRun, lampPatch, channels } = row.acquisition
   return {
     ...summaryOf(row, stateOf(situation, sets.length), sets.length),
-    notes, cameraProfileId, frameExposureSeconds, transfer, range, millimetresPerPixel, plan, guardSeconds, autoRun, channels,
+    notes, cameraProfileId, frameExposureSeconds, transfer, range, millimetresPerPixel, plan, guardSeconds, autoRun, lampPatch, channels,
     flags: flagsOf(situation.situation), stages: pipelineStages.map(stage => stageStatus(situation.situation, stage)),
     uploads, alignment, frameSets: sets,
     clip: clipOf(situation.situation), record: recordOf(situation.situation),

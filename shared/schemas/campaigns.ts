@@ -1,5 +1,5 @@
 import { z } from 'zod'
-import { flagSchema, planLineSchema, rangeSchema, transferSchema } from '../measurement'
+import { flagSchema, lampPatchSchema, planLineSchema, rangeSchema, transferSchema } from '../measurement'
 import { channelMappingSchema } from '../records'
 import { acquisitionStates, jobStates, stages, uploadStates } from '../states'
 import { idSchema, listQuerySchema, nameSchema, optionalText, timeSchema } from './common'
@@ -59,6 +59,7 @@ const acquisitionFields = {
   plan: z.array(planLineSchema).max(500, 'A plan holds at most 500 lines.'),
   guardSeconds: z.number().min(0, 'The guard cannot be negative.').max(1, 'A guard above 1 s would leave no frames.'),
   autoRun: z.boolean(),
+  lampPatch: lampPatchSchema.nullish(),
 }
 export const acquisitionCreateSchema = z.object({
   campaignId: idSchema,
@@ -108,7 +109,7 @@ export const alignmentPutSchema = z.object({ offsetSeconds: z.number().min(-1e6)
 export const acquisitionSchema = acquisitionSummarySchema.extend({
   notes: z.string().nullable(), cameraProfileId: idSchema.nullable(),
   frameExposureSeconds: z.number().nullable(), transfer: transferSchema, range: rangeSchema, millimetresPerPixel: z.number().nullable(),
-  plan: z.array(planLineSchema), guardSeconds: z.number(), autoRun: z.boolean(), channels: channelMappingSchema.nullable(),
+  plan: z.array(planLineSchema), guardSeconds: z.number(), autoRun: z.boolean(), lampPatch: lampPatchSchema.nullable(), channels: channelMappingSchema.nullable(),
   flags: z.array(flagSchema), stages: z.array(stageStatusSchema), uploads: z.array(uploadSchema),
   /** What inspect found (ClipFacts) and the file behind it; null until then. */
   clip: z.record(z.string(), z.unknown()).nullable(),

@@ -52,7 +52,7 @@ describe.each(kinds)('%s', (_, name, options) => {
   it('sums by difference equal a full run, bit for bit, over random edits, and numpy', async () => {
     const path = clips.make(name, [...options, ...tagged], { size: '162x90', seconds: 8 })
     const { facts, index } = await probeClip(path, { transfer: 'bt709', range: 'limited' })
-    const source = { path, clip: facts, index }
+    const source = { path, clip: facts, index, lampPatch: null }
     const next = random(facts.codec.length)
     const between = (low: number, high: number) => low + Math.floor(next() * (high - low + 1))
     let groups = [group('a', 10, 80), group('b', 95, 90), group('c', 190, 100), group('d', 300, 90)]

@@ -1,6 +1,6 @@
 import { beforeAll, describe, expect, it } from 'vitest'
 import { bandLook, groupName } from '../../../composables/bands'
-import { bodyOf, emptyForm, planError, planRow, settingsOf } from '../../../composables/acquisitionForm'
+import { bodyOf, emptyForm, patchError, planError, planRow, settingsOf } from '../../../composables/acquisitionForm'
 import { envelopePath } from '../../../composables/envelopePath'
 import * as format from '../../../composables/format'
 import { imageChoices } from '../../../composables/frameSetImages'
@@ -42,7 +42,15 @@ describe('the registration form', () => {
     expect(parsed).toMatchObject({ campaignId: 'c1', title: 'sweep A', guardSeconds: 0.002, plan: [{ frequencyHz: 412, repetitions: 3 }, { frequencyHz: 731 }], cameraProfileId: null })
   })
   it('takes settings back without binary dust', () => {
-    expect(settingsOf({ cameraProfileId: null, frameExposureSeconds: 0.02, transfer: 'bt709', range: 'limited', millimetresPerPixel: null, guardSeconds: 0.0013, autoRun: true }).guardMilliseconds).toBe(1.3)
+    expect(settingsOf({ cameraProfileId: null, frameExposureSeconds: 0.02, transfer: 'bt709', range: 'limited', millimetresPerPixel: null, guardSeconds: 0.0013, autoRun: true, lampPatch: null }).guardMilliseconds).toBe(1.3)
+  })
+  it('takes a lamp patch as four numbers and says what else it could not be', () => {
+    const sent = (lampPatch: string) => acquisitionCreateSchema.safeParse(bodyOf({ ...emptyForm('c1'), title: 'a', lampPatch }))
+    expect(sent('120, 40 64;48').data?.lampPatch).toEqual({ left: 120, top: 40, width: 64, height: 48 })
+    expect(sent(' ').data?.lampPatch).toBeNull()
+    expect(sent('120, 40, 64').error?.issues[0]?.message).toMatch(/four whole numbers/)
+    expect(patchError({ 'lampPatch.width': 'Too small.' })).toBe('Too small.')
+    expect(patchError({ title: 'x' })).toBeUndefined()
   })
   it('says which line of the plan is wrong', () => {
     expect(planError({ 'plan.2.frequencyHz': 'Give the frequency in Hz, above 0.' })).toBe('Line 3: Give the frequency in Hz, above 0.')

@@ -1,0 +1,1 @@
+ALTER TABLE `acquisitions` ADD `lamp_patch` longtext;
