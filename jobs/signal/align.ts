@@ -122,7 +122,7 @@ function conclude(input: AlignInput, problem: AlignProblem, found: Found | null,
     return first
   }
   const odd = oddFrames(input.frameLight, first.predicted)
-  if (first.confidence === 0 || odd.length === 0 || odd.length > Math.max(2, mostOddShare * input.frameLight.length)) return first
+  if (first.evidence.gain === 0 || odd.length === 0 || odd.length > Math.max(2, mostOddShare * input.frameLight.length)) return first
   const light = input.frameLight.slice()
   for (const frame of odd) light[frame] = Number.NaN
   const without = pose({ ...input, frameLight: light }, problem)

@@ -129,8 +129,9 @@ function uniqueness(problem: AlignProblem, best: Polished, second: Polished): { 
 /**
  * How far an automatic alignment may be trusted, and why.
  *
- * The confidence is the weakest of five grades: features seen (edges, beat), residual over the span of light, how much
- * worse the best solution elsewhere is, formal precision of the offset against a frame, and share of the clip covered.
+ * The confidence is the weakest of six grades: features seen (edges, beat), residual over the span of light, how much
+ * worse the best solution elsewhere is, formal precision of the offset against a frame in the middle of what the record
+ * covers and at the clip's start, and share of the clip covered.
  * Each grade below 1 gives a sentence.
  */
 export function gradeAlignment(problem: AlignProblem, judged: Judged): { confidence: number, evidence: AlignmentEvidence } {
@@ -143,12 +144,15 @@ export function gradeAlignment(problem: AlignProblem, judged: Judged): { confide
   const beat = strongest > Math.max(1.5 * residualRms, 0.0015 * highest)
   const unique = second && uniqueness(problem, best, second)
   const precisionFrames = best.middleDeviationSeconds / problem.frameSeconds
+  const startFrames = Math.hypot(best.middleDeviationSeconds, best.driftDeviationPpm * 1e-6 * best.pivotSeconds) / problem.frameSeconds
   const covered = best.frames / problem.light.length
   const grades = {
     features: edges >= 2 ? 1 : edges === 1 ? (beat ? 0.9 : 0.65) : beat ? 0.75 : 0.1,
     residual: grade(residualRms / brightest, 0.06, 0.012),
     uniqueness: unique?.grade ?? 1,
     precision: grade(precisionFrames, 0.3, 0.02),
+    // Errors are not independent from frame to frame, so the truth lies up to five such deviations away.
+    extrapolation: problem.sparse ? grade(startFrames, 0.1, 0.004) : grade(startFrames, 0.005, 0.0012),
     coverage: covered >= 0.9 ? 1 : 0.5 + 0.5 * covered / 0.9,
   }
   const reasons = [featureSentence(problem, edges, beat)]
@@ -161,6 +165,7 @@ export function gradeAlignment(problem: AlignProblem, judged: Judged): { confide
       ? `The light fixes the offset only to about ${precisionFrames.toFixed(2)} frame.`
       : 'The light does not fix the offset at all.')
   }
+  else if (grades.extrapolation < 0.6) reasons.push(`The light fixes drift only to about ${best.driftDeviationPpm.toFixed(1)} ppm, and the offset at the clip's start only to about ${(5 * startFrames).toFixed(3)} frame.`)
   if (grades.coverage < 1) reasons.push(`The record covers only ${Math.round(100 * covered)} % of the clip's frames.`)
   return {
     confidence: Math.min(...Object.values(grades)),
