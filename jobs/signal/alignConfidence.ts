@@ -95,6 +95,13 @@ function frameCorrelation(errors: Float64Array): number {
   return squares > 0 ? Math.min(0.98, Math.max(0, products / squares)) : 0
 }
 
+/** Rms of what is new in each frame's error over that of the errors: slow ones (gain drifting with temperature) do not blur timing. */
+function quickShare(problem: AlignProblem, solution: Polished): number {
+  const errors = errorsOf(problem, solution)
+  const { squares, count } = innovations(errors, frameCorrelation(errors))
+  return count > 0 && solution.squares > 0 ? Math.min(1, Math.sqrt(squares / count / (solution.squares / solution.frames))) : 1
+}
+
 /** What a solution explains of the light (see `explained`), in nats over all frames, errors taken as autoregressive. */
 function explainedNats(problem: AlignProblem, errors: Float64Array, correlation: number): number {
   const fit = innovations(errors, correlation)
@@ -144,7 +151,7 @@ export function gradeAlignment(problem: AlignProblem, judged: Judged): { confide
   const beat = strongest > Math.max(1.5 * residualRms, 0.0015 * highest)
   const unique = second && uniqueness(problem, best, second)
   const precisionFrames = best.middleDeviationSeconds / problem.frameSeconds
-  const startFrames = Math.hypot(best.middleDeviationSeconds, best.driftDeviationPpm * 1e-6 * best.pivotSeconds) / problem.frameSeconds
+  const startFrames = quickShare(problem, best) * Math.hypot(best.middleDeviationSeconds, best.driftDeviationPpm * 1e-6 * best.pivotSeconds) / problem.frameSeconds
   const covered = best.frames / problem.light.length
   const grades = {
     features: edges >= 2 ? 1 : edges === 1 ? (beat ? 0.9 : 0.65) : beat ? 0.75 : 0.1,
@@ -164,8 +171,7 @@ export function gradeAlignment(problem: AlignProblem, judged: Judged): { confide
     reasons.push(Number.isFinite(precisionFrames)
       ? `The light fixes the offset only to about ${precisionFrames.toFixed(2)} frame.`
       : 'The light does not fix the offset at all.')
-  }
-  else if (grades.extrapolation < 0.6) reasons.push(`The light fixes drift only to about ${best.driftDeviationPpm.toFixed(1)} ppm, and the offset at the clip's start only to about ${(5 * startFrames).toFixed(3)} frame.`)
+  } else if (grades.extrapolation < 0.6) reasons.push(`The light fixes drift only to about ${best.driftDeviationPpm.toFixed(1)} ppm, and the offset at the clip's start only to about ${(5 * startFrames).toFixed(3)} frame.`)
   if (grades.coverage < 1) reasons.push(`The record covers only ${Math.round(100 * covered)} % of the clip's frames.`)
   return {
     confidence: Math.min(...Object.values(grades)),
