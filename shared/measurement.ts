@@ -85,6 +85,9 @@ export interface Regime {
   depth: number | null
   /** Total harmonic distortion plus residual over the fundamental, 0…1. */
   distortion: number | null
+  /** Standard deviations from the noise; the phase's holds in the regime's middle, at time zero the frequency's turns it further. */
+  frequencyDeviationHz?: number | null
+  phaseDeviationDeg?: number | null
   flags: Flag[]
 }
 

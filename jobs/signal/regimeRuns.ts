@@ -1,7 +1,7 @@
 import { decimateStretch, type Decimated } from './decimate'
 import { computeCells, type RegimeCells } from './regimeCells'
 import { fitSine3, fitSine4, SineFitError, type SineFit } from './sineFit'
-import { dominantTone } from './spectrum'
+import { dominantTone, type Tone } from './spectrum'
 
 /** Consecutive cells with one lamp state; the true boundaries lie within two cells of its ends. */
 export interface LampRun {
@@ -24,6 +24,9 @@ const leastDepth = 0.08
 const leastPlannedDepth = 0.025
 /** No lamp is modulated at less than this share of the highest level; what a tone there would be is pick-up in the dark. */
 const dimmestLevel = 0.3
+
+/** Rate at which tones are looked for first. */
+const quickHz = 16_000
 
 interface Search {
   samples: Float32Array
@@ -97,12 +100,23 @@ function isPlanned(search: Search, frequencyHz: number): boolean {
   return search.planned.some(planned => near(planned, Math.max(0.5, 0.01 * planned))) && !near(100, 0.7) && !near(120, 0.7)
 }
 
+/**
+ * The dominant tone from samples averaged to about 16 kHz, when it explains the deviation of the samples themselves:
+ * what folds back from above half of that rate is weakened by the averaging and does not.
+ */
+function quickTone(search: Search, range: { first: number, count: number }, deviation: number): Tone | null {
+  const averaged = decimateStretch(search.samples, search.sampleRateHz, range, quickHz / 20)
+  if (averaged.samples.length * 2 > range.count) return null
+  const tone = dominantTone(averaged.samples, averaged.sampleRateHz, { first: 0, count: averaged.samples.length })
+  return tone && tone.frequencyHz < quickHz / 4 && tone.amplitude / Math.SQRT2 > 0.9 * deviation ? tone : null
+}
+
 function seedTone(search: Search, cell: number, level: number): SineFit | null {
   const range = stretch(search, cell, harmonicSeedCells)
   let loudest = 0
   for (let k = cell; k < cell + harmonicSeedCells; k++) loudest = Math.max(loudest, search.cells.deviation[k])
   if (loudest < leastPlannedDepth * level / 2) return null
-  const tone = dominantTone(search.samples, search.sampleRateHz, range)
+  const tone = quickTone(search, range, loudest) ?? dominantTone(search.samples, search.sampleRateHz, range)
   if (!tone || tone.amplitude < 0.6 * leastPlannedDepth * level) return null
   const fit = refine(search, tone.frequencyHz, range)
   if (!fit) return null

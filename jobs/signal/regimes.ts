@@ -25,6 +25,7 @@ interface Fitted {
   stretch: LampStretch
   level: number
   fit: SineFit | null
+  frequencyDeviationHz: number | null
 }
 
 function meanOf(samples: Float32Array, first: number, end: number): number {
@@ -70,7 +71,7 @@ function isPickUp(entry: Fitted, lowest: number, lit: number): boolean {
 function withoutPickUp(fitted: Fitted[]): Fitted[] {
   const lit = Math.max(...fitted.map(entry => entry.level))
   const lowest = Math.min(...fitted.map(entry => entry.level))
-  return fitted.map(entry => isPickUp(entry, lowest, lit) ? { ...entry, fit: null, stretch: { ...entry.stretch, kind: 'constant', frequencyHz: null } } : entry)
+  return fitted.map(entry => isPickUp(entry, lowest, lit) ? { ...entry, fit: null, frequencyDeviationHz: null, stretch: { ...entry.stretch, kind: 'constant', frequencyHz: null } } : entry)
 }
 
 /** Lamp off: near the lowest level, far below lit, and not above the troughs of the harmonic regimes. */
@@ -117,6 +118,9 @@ function toRegime(samples: Float32Array, sampleRateHz: number, entry: Fitted, co
     lampPhaseDeg: fit?.phaseDeg ?? null,
     depth: fit ? fit.amplitude / (level - context.darkLevel) : null,
     distortion,
+    frequencyDeviationHz: entry.frequencyDeviationHz,
+    // Of a known frequency's phase under white noise: √2·σ / (A·√n) radians.
+    phaseDeviationDeg: distortion === null ? null : distortion / Math.sqrt(stretch.end - stretch.first) * 180 / Math.PI,
     flags: regimeFlags(samples, sampleRateHz, entry, context.lit, distortion),
   }
 }
@@ -131,19 +135,19 @@ function fitStretches(samples: Float32Array, sampleRateHz: number, stretches: La
     const { part, guessHz: lampHz } = lampBesideMains(raw, guessHz, mains)
     return { ...part, samples: removeTones(part.samples, part.sampleRateHz, lampHz), guessHz: lampHz }
   })
-  const fits = new Map<LampStretch, SineFit>()
+  const fits = new Map<LampStretch, { fit: SineFit, deviationHz: number }>()
   for (const line of findLineFrequencies(parts, planned)) {
     for (const member of line.members) {
       const stretch = harmonic[member]
       const part = parts[member]
       const clean = fitSine3(part.samples, part.sampleRateHz, line.frequencyHz, part)
       const whole = fitSine3(samples, sampleRateHz, line.frequencyHz, { first: stretch.first, count: stretch.end - stretch.first })
-      fits.set(stretch, { ...whole, phaseDeg: clean.phaseDeg, amplitude: clean.amplitude / part.gain })
+      fits.set(stretch, { fit: { ...whole, phaseDeg: clean.phaseDeg, amplitude: clean.amplitude / part.gain }, deviationHz: line.deviationHz })
     }
   }
   return stretches.map((stretch) => {
-    const fit = fits.get(stretch) ?? null
-    return { stretch, fit, level: fit ? fit.offset : meanOf(samples, stretch.first, stretch.end) }
+    const { fit, deviationHz } = fits.get(stretch) ?? { fit: null, deviationHz: null }
+    return { stretch, fit, level: fit ? fit.offset : meanOf(samples, stretch.first, stretch.end), frequencyDeviationHz: deviationHz }
   })
 }
 
@@ -173,8 +177,9 @@ function recordFlags(regimes: Regime[], darkLevel: number | null): Flag[] {
  * @param sampleRateHz samples a second; lamp frequencies must lie below half of it
  * @returns regimes in order of time (phase in (−180, 180] about the record's first sample; depth after the dark level,
  *   0 when unseen), the dark level, and flags on the whole record
- * Accuracy on seeded truth: boundaries within a few samples, frequency 0.01 Hz over 1 s, phase 0.2° within a minute of
- *   the record's start.
+ * Accuracy on seeded truth: boundaries within a few samples, frequency 0.01 Hz over 1 s, phase 0.2° in the regime's middle.
+ *   `lampPhaseDeg` counts from the record's first sample with the line's frequency; an error of that turns it by
+ *   360°·δf·t, for all groups of a line alike to first order. Plan the exact frequency where the number itself matters.
  * Source: sine fits of IEEE Std 1057; change point by least squares (Bai 1994).
  */
 export function findRegimes(illumination: Float32Array, sampleRateHz: number, options: RegimeOptions = {}): RegimeResult {

@@ -20,7 +20,10 @@ export interface CutFigures {
   leastUsedShare: number
   /** Over regimes of 1 s and more. */
   worstFrequencyHz: number
+  /** In the regime's middle. */
   worstPhaseDeg: number
+  /** About the record's first sample, as stated: with what the frequency's error adds. */
+  worstPhaseAtZeroDeg: number
   /** Relative. */
   worstDepth: number
   secondsOfRecord: number
@@ -82,16 +85,18 @@ function judgeGroup(truth: GroupTruth, group: Group | undefined, scenario: Scena
   const middle = (Math.max(truth.startSeconds, 0) + Math.min(truth.endSeconds, scenario.record.durationSeconds)) / 2
   const regime = regimes.find(({ startSeconds, endSeconds }) => startSeconds < middle && endSeconds > middle)!
   figures.worstFrequencyHz = Math.max(figures.worstFrequencyHz, Math.abs(regime.frequencyHz! - truth.frequencyHz!))
-  figures.worstPhaseDeg = Math.max(figures.worstPhaseDeg, Math.abs(wrapDegrees(regime.lampPhaseDeg! - truth.lampPhaseDeg!)))
+  const phaseError = regime.lampPhaseDeg! - truth.lampPhaseDeg!
+  figures.worstPhaseDeg = Math.max(figures.worstPhaseDeg, Math.abs(wrapDegrees(phaseError + 360 * (regime.frequencyHz! - truth.frequencyHz!) * middle)))
+  figures.worstPhaseAtZeroDeg = Math.max(figures.worstPhaseAtZeroDeg, Math.abs(wrapDegrees(phaseError)))
   figures.worstDepth = Math.max(figures.worstDepth, Math.abs(regime.depth! / truth.depth! - 1))
 }
 
 function emptyFigures(): CutFigures {
-  return { schedules: 0, groups: 0, wrongFrames: 0, edgeFrames: 0, missingGroups: 0, leastUsedShare: 1, worstFrequencyHz: 0, worstPhaseDeg: 0, worstDepth: 0, secondsOfRecord: 0 }
+  return { schedules: 0, groups: 0, wrongFrames: 0, edgeFrames: 0, missingGroups: 0, leastUsedShare: 1, worstFrequencyHz: 0, worstPhaseDeg: 0, worstPhaseAtZeroDeg: 0, worstDepth: 0, secondsOfRecord: 0 }
 }
 
 const sums = ['schedules', 'groups', 'wrongFrames', 'edgeFrames', 'missingGroups', 'secondsOfRecord'] as const
-const worsts = ['worstFrequencyHz', 'worstPhaseDeg', 'worstDepth'] as const
+const worsts = ['worstFrequencyHz', 'worstPhaseDeg', 'worstPhaseAtZeroDeg', 'worstDepth'] as const
 
 /** The figures over so many seeded schedules of the independent forward model. */
 export function cutFigures(schedules = 100, firstSeed = 1, onCase: (line: string) => void = () => {}): CutFigures {
