@@ -91,7 +91,8 @@ export function solveFrameSet(input: FrameSetInput): FrameSetSolution {
   const plan = planSolution(input)
   const image = () => new Float32Array(pixels)
   const images = { scene: image(), p: image(), q: image(), noise: image(), ...plan.columns === 4 ? { ambient: image() } : {} }
-  const squares = solveBand(plan, plan.used.map(g => sums[g]), images)
+  const squares = new Float64Array(plan.used.length)
+  solveBand(plan, plan.used.map(g => sums[g]), images, squares)
   return { ...images, ambient: images.ambient ?? null, degreesOfFreedom: plan.degreesOfFreedom, conditionNumber: plan.conditionNumber, covariance: plan.covariance, residualRms: residualRmsOf(plan, squares, pixels, sums.length) }
 }
 
@@ -146,12 +147,11 @@ function assertSolvable({ roles, integrals }: Omit<FrameSetInput, 'sums' | 'widt
  *
  * @param sums of the plan's used groups, each as long as the images
  * @param images written in place; `noise` becomes NaN without degrees of freedom
- * @returns Σ over these pixels of each used group's squared residual; add the bands' up in the order of the bands
+ * @param squares of each used group: Σ over these pixels of its squared residual is added; left out, it is not computed
  */
-export function solveBand(plan: SolvePlan, sums: readonly Uint32Array[], images: BandImages): Float64Array {
+export function solveBand(plan: SolvePlan, sums: readonly Uint32Array[], images: BandImages, squares?: Float64Array): void {
   const { columns, degreesOfFreedom } = plan
   const pixels = images.noise.length
-  const squares = new Float64Array(sums.length)
   const [weights, rows] = [weightsOf(plan), rowsOf(plan)]
   const block = new Float64Array(4 * blockPixels)
   const variance = new Float64Array(blockPixels)
@@ -162,10 +162,12 @@ export function solveBand(plan: SolvePlan, sums: readonly Uint32Array[], images:
     variance.fill(0)
     for (let g = 0; g < sums.length; g += 2) addPair(block, sums[g], sums[g + 1] ?? sums[g], from, length, weights, 4 * g)
     targets.forEach((image, k) => image?.set(block.subarray(k * blockPixels, k * blockPixels + length), from))
-    if (degreesOfFreedom > 0) for (let g = 0; g < sums.length; g++) squares[g] += addResiduals(variance, sums[g], from, length, block, rows, 4 * g)
+    if (degreesOfFreedom > 0) {
+      for (let g = 0; g < sums.length; g += 2) addResiduals(variance, sums[g], sums[g + 1] ?? sums[g], g + 1 < sums.length ? 1 : 0, from, length, block, rows, 4 * g)
+      if (squares) for (let g = 0; g < sums.length; g++) squares[g] += squaredResiduals(sums[g], from, length, block, rows, 4 * g)
+    }
     for (let i = 0; i < length; i++) images.noise[from + i] = degreesOfFreedom > 0 ? Math.sqrt(variance[i] / degreesOfFreedom) : Number.NaN
   }
-  return squares
 }
 
 /** Four weights a group: of s, p, q and the ambient term, 0 without one; a group of zeros ends an odd number. */
@@ -177,7 +179,7 @@ function weightsOf({ inverse, columns, used }: SolvePlan): Float64Array {
 
 /** Four coefficients a group: A, C, S, N, the last 0 without an ambient term. */
 function rowsOf({ matrix, columns, used }: SolvePlan): Float64Array {
-  const rows = new Float64Array(4 * used.length)
+  const rows = new Float64Array(4 * (used.length + 1))
   for (let g = 0; g < used.length; g++) for (let k = 0; k < columns; k++) rows[4 * g + k] = matrix[columns * g + k]
   return rows
 }
@@ -199,13 +201,26 @@ function addPair(block: Float64Array, first: Uint32Array, second: Uint32Array, f
   }
 }
 
-/** Adds the squared residuals of one group to each pixel's; returns their sum. */
-function addResiduals(variance: Float64Array, source: Uint32Array, from: number, length: number, block: Float64Array, rows: Float64Array, at: number): number {
+/** Adds the squared residuals of two groups to each pixel's; of the first alone when `paired` is 0. */
+function addResiduals(variance: Float64Array, first: Uint32Array, second: Uint32Array, paired: number, from: number, length: number, block: Float64Array, rows: Float64Array, at: number): void {
+  const [a1, c1, s1, n1] = [rows[at], rows[at + 1], rows[at + 2], rows[at + 3]]
+  const [a2, c2, s2, n2] = [rows[at + 4], rows[at + 5], rows[at + 6], rows[at + 7]]
+  for (let i = 0; i < length; i++) {
+    const s = block[i]
+    const p = block[blockPixels + i]
+    const q = block[2 * blockPixels + i]
+    const d = block[3 * blockPixels + i]
+    const one = first[from + i] - a1 * s - c1 * p - s1 * q - n1 * d
+    const other = paired * (second[from + i] - a2 * s - c2 * p - s2 * q - n2 * d)
+    variance[i] = variance[i] + one * one + other * other
+  }
+}
+
+function squaredResiduals(source: Uint32Array, from: number, length: number, block: Float64Array, rows: Float64Array, at: number): number {
   const [a, c, b, n] = [rows[at], rows[at + 1], rows[at + 2], rows[at + 3]]
   let total = 0
   for (let i = 0; i < length; i++) {
     const residual = source[from + i] - a * block[i] - c * block[blockPixels + i] - b * block[2 * blockPixels + i] - n * block[3 * blockPixels + i]
-    variance[i] += residual * residual
     total += residual * residual
   }
   return total
