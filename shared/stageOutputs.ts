@@ -20,7 +20,7 @@ export interface StageFacts {
    * stage has decoded the whole clip, `light` (the same of every frame).
    */
   meter: { frameCount: number, glanced: number, meanLight: number }
-  /** files: one per channel role, raw little-endian float32; `regimes` (JSON). */
+  /** files: one per channel role, raw little-endian float32; its pyramid of extremes; `regimes` (JSON). */
   record: { source: SourceFile, record: RecordFacts, darkLevel: number | null }
   /**
    * files: `predicted` (NPY float64, predicted light of each frame in the unit of the meter's light; NaN outside the
@@ -44,5 +44,8 @@ export interface StageFacts {
   }
   check: { frameSetIds: string[] }
 }
+
+/** Name of the file that holds a channel's pyramid (jobs/signal/envelope.ts). */
+export const pyramidName = (role: string) => `${role}-pyramid`
 
 export type FactsOf<S extends PipelineStage> = StageFacts[S]

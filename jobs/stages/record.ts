@@ -1,12 +1,14 @@
-import { createReadStream } from 'node:fs'
 import { writeFile } from 'node:fs/promises'
 import { join } from 'node:path'
 import type { Flag, Regime } from '../../shared/measurement'
 import type { ChannelMapping, RecordFacts } from '../../shared/records'
-import type { SourceFile } from '../../shared/stageOutputs'
-import { readCsvRecord, RecordError } from '../formats/recordCsv'
+import { pyramidName, type SourceFile } from '../../shared/stageOutputs'
+import { readRecord } from '../formats/readRecord'
+import { RecordError } from '../formats/recordError'
 import { plannedFrequencies } from '../queue/inputs'
+import { buildPyramid } from '../signal/envelope'
 import { findRegimes } from '../signal/regimes'
+import { openFileSource } from './fileSource'
 import { sourceOf } from './inputs'
 import { defineStage, StageError, type StageHelpers } from './stage'
 
@@ -24,9 +26,9 @@ export interface RecordRegimes {
 }
 
 /** Mistakes that a person mends by saying which column is which. */
-const mappingCodes = new Set(['no-illumination', 'unknown-column', 'no-time', 'ambiguous-columns'])
+const mappingCodes = new Set(['no-illumination', 'unknown-column', 'no-time', 'ambiguous-columns', 'sensitivity-not-volts', 'rates-differ', 'starts-differ', 'clock-times'])
 
-/** Reads the DAQ file once: channels as float32 columns, and the regimes of the lamp. */
+/** Reads the DAQ file once: channels as float32 columns with their pyramids of extremes, and the regimes of the lamp. */
 export const record = defineStage<Payload>({
   load({ record: upload, acquisition }, store) {
     const source = sourceOf(upload, 'record')
@@ -38,7 +40,9 @@ export const record = defineStage<Payload>({
     const files: Record<string, string> = {}
     for (const channel of channels) {
       files[channel.role] = join(helpers.workDir, `${channel.role}.f32`)
-      await writeFile(files[channel.role]!, new Uint8Array(channel.data.buffer, channel.data.byteOffset, channel.data.byteLength))
+      await writeFile(files[channel.role]!, bytesOf(channel.data))
+      files[pyramidName(channel.role)] = join(helpers.workDir, pyramidName(channel.role))
+      await writeFile(files[pyramidName(channel.role)]!, bytesOf(buildPyramid(channel.data).pairs))
     }
     const illumination = channels.find(channel => channel.role === 'illumination')!
     const found = findRegimes(illumination.data, sampleRateHz, { plannedFrequenciesHz })
@@ -58,21 +62,22 @@ export const record = defineStage<Payload>({
 })
 
 async function read(path: string, source: SourceFile, mapping: ChannelMapping | null, { signal, progress }: StageHelpers) {
-  let bytes = 0
-  async function* chunks() {
-    for await (const chunk of createReadStream(path, { signal, highWaterMark: 1 << 20 })) {
-      bytes += (chunk as Buffer).length
-      progress({ progress: 0.8 * bytes / source.bytes })
-      yield chunk as Uint8Array
-    }
-  }
+  const file = openFileSource(path, (offset) => {
+    signal.throwIfAborted()
+    progress({ progress: 0.8 * offset / source.bytes })
+  })
   try {
-    return await readCsvRecord(chunks(), { columns: mapping?.columns ?? {}, sampleRateHz: mapping?.sampleRateHz, units: mapping?.units })
+    const { columns = {}, sampleRateHz, units, sensitivities } = mapping ?? {}
+    return await readRecord(file, { filename: source.filename, columns, sampleRateHz, units, sensitivities })
   } catch (error) {
     if (error instanceof RecordError && mappingCodes.has(error.code)) throw new StageError(error.code, error.message, { review: true, cause: error })
     throw error
+  } finally {
+    file.close()
   }
 }
+
+const bytesOf = (data: Float32Array) => new Uint8Array(data.buffer, data.byteOffset, data.byteLength)
 
 function extremes(data: Float32Array): { minimum: number, maximum: number } {
   let minimum = Infinity
