@@ -43,6 +43,9 @@ const mostOddShare = 0.003
 /** Below this share of measured frames the gaps are too wide to be bridged. */
 const sparseShare = 0.7
 
+/** Rms error over the light's spread from which lost frames are looked for in any case. */
+const poorFit = 0.05
+
 function pose(input: AlignInput, known?: AlignProblem): AlignProblem {
   const { frameLight, frameTimesSeconds, illumination, sampleRateHz } = input
   if (frameLight.length !== frameTimesSeconds.length) throw new AlignError('Frame light and frame times differ in length; meter the clip again.')
@@ -114,7 +117,8 @@ function conclude(input: AlignInput, problem: AlignProblem, found: Found | null,
     return unjudged(input, { offsetSeconds: 0, driftPpm: 0, method: 'light', version: 1 }, reason)
   }
   const blocks = problem.sparse ? { late: 0, odd: 0 } : disagreeingBlocks(problem, found.best)
-  const lost = blocks.odd >= 2 ? findLosses(problem, found.best) : null
+  const poor = found.best.squares > (poorFit ** 2) * found.best.coveredSquares
+  const lost = !problem.sparse && (poor || blocks.odd >= 2) ? findLosses(problem, found.best) : null
   if (lost) return reportLosses(input, lost)
   const first = doubtTiming(report(input, problem, found), blocks.late)
   if (problem.sparse) {
