@@ -1,5 +1,6 @@
 import { inputFile, inputLimits, editListOptions, runProcess } from './ffmpegProcess'
 import type { PacketList } from './packets'
+import { passLimits } from './processLimits'
 import { scanRecoveryPoints } from './recoveryPoints'
 
 /** Codecs whose key frames let every frame shown at or after them be decoded without what lies before. */
@@ -39,7 +40,7 @@ async function resetTicks(path: string, container: string, types: string, signal
     '-nostdin', '-hide_banner', '-v', 'error', ...inputLimits, ...editListOptions(container), '-copyts', '-i', inputFile(path),
     '-map', '0:V:0', '-c', 'copy', '-copyinkf', '-bsf:v', `filter_units=pass_types=${types}`, '-avoid_negative_ts', 'disabled', '-f', 'framecrc', 'pipe:1',
   ], {
-    signal,
+    signal, ...await passLimits(path),
     onOutput: async (stdout) => {
       for await (const chunk of stdout.setEncoding('utf8')) {
         const lines = (partial + chunk).split('\n')

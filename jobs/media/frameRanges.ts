@@ -1,7 +1,7 @@
 import { frameAtTick, lastNotAbove, type FrameIndex } from './frameIndex'
 import { FrameTicks, ticksFilter } from './frameTicks'
 import { runProcess } from './ffmpegProcess'
-import { lumaArguments, sizeChanges } from './frames'
+import { containment, lumaArguments, sizeChanges } from './frames'
 import { assembleLuma, frameBytesOf, ownTarget, type FrameTarget, type OnFrame, type ReadableClip } from './lumaStream'
 import { MediaError } from './mediaError'
 import { normalizeRanges, planRuns, type FrameRange } from './rangePlan'
@@ -108,7 +108,7 @@ async function decodeFrom({ path, clip, index, options, onFrame }: Source, start
     return wanted(frame) ? options.target(frame, frameBytesOf(clip)) : null
   }
   const { exitCode, stderrTail, errorLines, stopped } = await runProcess('ffmpeg', rangeArguments(path, clip, index, options.threads, start), {
-    signal: options.signal,
+    signal: options.signal, ...containment(clip, options.threads),
     onSide: frameTicks.add,
     onSideEnd: frameTicks.end,
     onErrorLine: judge.complain,

@@ -3,6 +3,7 @@ import { editListOptions, inputFile, inputLimits, runProcess } from './ffmpegPro
 import { FrameTicks, ticksFilter } from './frameTicks'
 import { assembleLuma, frameBytesOf, ownTarget, type FrameTarget, type OnFrame, type ReadableClip } from './lumaStream'
 import { MediaError } from './mediaError'
+import { decodeLimits } from './processLimits'
 
 export type { FrameTarget, OnFrame, ReadableClip } from './lumaStream'
 
@@ -41,7 +42,7 @@ export async function readFrames(path: string, clip: ReadableClip, { signal, fir
   const ticks = new FrameTicks()
   const assembled = { frames: 0, bytes: 0 }
   const { exitCode, stderrTail, errorLines } = await runProcess('ffmpeg', decodeArguments(path, clip.container, threads, last), {
-    signal,
+    signal, ...containment(clip, threads),
     onSide(text) {
       progress.add(text)
       ticks.add(text)
@@ -61,6 +62,9 @@ export async function readFrames(path: string, clip: ReadableClip, { signal, fir
 }
 
 export const sizeChanges = ({ width, height }: ReadableClip, stderrTail = '') => new MediaError('size-changes', `The picture size changes within the clip: it is not ${width}×${height} throughout. Record it again with one setting.`, { stderrTail })
+
+/** What a decoder may use and how long it may be silent. */
+export const containment = (clip: ReadableClip, threads = defaultThreads()) => ({ limits: decodeLimits(clip, threads), idleSeconds: 120 })
 
 /** One frame more in the making than ffmpeg's own choice fills the time in which a frame waits to be written out. */
 const defaultThreads = () => Math.min(16, availableParallelism() + 2)

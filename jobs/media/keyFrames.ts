@@ -2,7 +2,7 @@ import { frameAtTick, type FrameIndex } from './frameIndex'
 import { readFrameRanges, type ReadRangesOptions, type ReadRangesResult } from './frameRanges'
 import { FrameTicks, ticksFilter } from './frameTicks'
 import { runProcess } from './ffmpegProcess'
-import { lumaArguments } from './frames'
+import { containment, lumaArguments } from './frames'
 import { assembleLuma, frameBytesOf, ownTarget, type OnFrame, type ReadableClip } from './lumaStream'
 
 /**
@@ -23,7 +23,7 @@ export async function readKeyFrames(path: string, clip: ReadableClip, index: Fra
   let frame = -1
   let complaints = 0
   const { stderrTail } = await runProcess('ffmpeg', lumaArguments(path, clip.container, { threads, filters: [ticksFilter], input: ['-copyts', '-skip_frame', 'nokey'] }), {
-    signal,
+    signal, ...containment(clip, threads),
     onSide: ticks.add,
     onSideEnd: ticks.end,
     onErrorLine: () => void complaints++,

@@ -2,7 +2,7 @@ import type { ClipFacts } from '../../shared/measurement'
 import type { PixelPipe } from './pixelPipe'
 
 /** What the reader must know of a clip. */
-export type ReadableClip = Pick<ClipFacts, 'container' | 'width' | 'height' | 'bitDepth'>
+export type ReadableClip = Pick<ClipFacts, 'container' | 'width' | 'height' | 'bitDepth'> & Partial<Pick<ClipFacts, 'frameCount'>>
 
 /** Luma codes of one frame, row-major. The memory is reused: copy what must outlive the call. */
 export type OnFrame = (luma: Uint8Array | Uint16Array, index: number) => void | Promise<void>

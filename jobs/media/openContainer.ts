@@ -1,6 +1,7 @@
-import { open } from 'node:fs/promises'
+import { open, stat } from 'node:fs/promises'
 import { inputFile, inputLimits, maximumPixels, runProcess } from './ffmpegProcess'
 import { MediaError } from './mediaError'
+import { probeLimits } from './processLimits'
 
 const readable = 'Upload MP4, MOV, MKV, AVI, MXF or an MPEG stream.'
 /** Opening reads headers and the first frames only. */
@@ -19,7 +20,7 @@ const tooBig = /exceeds specified max pixel count/
 export async function openContainer(path: string, signal?: AbortSignal): Promise<string> {
   let text = ''
   const { exitCode, stderrTail } = await runProcess('ffprobe', ['-hide_banner', '-v', 'error', ...inputLimits, '-show_entries', 'format=format_name', '-of', 'default=nw=1:nk=1', inputFile(path)], {
-    signal, timeoutSeconds,
+    signal, timeoutSeconds, limits: probeLimits((await stat(path)).size),
     onOutput: async (stdout) => {
       for await (const chunk of stdout.setEncoding('utf8')) text += chunk
     },

@@ -1,4 +1,5 @@
 import { editListOptions, inputFile, inputLimits, runProcess } from './ffmpegProcess'
+import { passLimits } from './processLimits'
 
 export interface PacketList {
   /** Presentation time of each packet in ticks of the stream's time base, ascending; the edit list is ignored. */
@@ -40,7 +41,7 @@ export async function listPackets(path: string, container: string, signal?: Abor
     '-hide_banner', '-v', 'error', ...inputLimits, ...editListOptions(container),
     '-select_streams', 'V:0', '-show_entries', 'packet=pts,dts,size,flags', '-of', 'csv=p=0', inputFile(path),
   ], {
-    signal,
+    signal, ...await passLimits(path),
     onOutput: async (stdout) => {
       for await (const chunk of stdout.setEncoding('utf8')) {
         const lines = (partial + chunk).split('\n')

@@ -1,3 +1,6 @@
+/** Pixels of a picture; a few kilobytes can claim a picture that takes gigabytes. */
+export const maximumPixels = 8192 * 4320
+
 /** Pixel formats whose luma plane ffmpeg's extractplanes hands over as raw codes, low bits first. */
 export const lumaFormats: Record<string, { bitDepth: 8 | 10, isGray: boolean }> = {
   ...of(8, false, 'yuv420p', 'yuvj420p', 'yuv422p', 'yuvj422p', 'yuv444p', 'yuvj444p', 'nv12'),

@@ -19,6 +19,9 @@ const enlarge = `fcntl(STDIN, 1031, ${pipeBytes})`
  * pair of sockets, read in pieces of 64 KiB of fresh memory each: for raw video that takes a quarter longer.
  */
 export class PixelPipe {
+  /** Since when bytes are waited for; null while the reader holds them up. */
+  private waitingSince: number | null = null
+
   private constructor(
     /** File descriptor for the child's standard output; to be closed here once the child has it. */
     readonly writeEnd: number,
@@ -45,6 +48,10 @@ export class PixelPipe {
     closeSync(this.writeEnd)
   }
 
+  waitedSeconds(): number {
+    return this.waitingSince === null ? 0 : (performance.now() - this.waitingSince) / 1000
+  }
+
   /** Close a pipe that no child has got. */
   abandon(): void {
     closeSync(this.writeEnd)
@@ -57,17 +64,23 @@ export class PixelPipe {
    */
   read(memory: () => Uint8Array, filled: (bytes: number) => boolean | Promise<boolean>): Promise<void> {
     return new Promise((settle, reject) => {
+      const wait = () => {
+        this.waitingSince = performance.now()
+        return true
+      }
       const end = (error?: unknown) => {
+        this.waitingSince = null
         socket.destroy()
         if (error) reject(error as Error)
         else settle()
       }
       const callback = (bytes: number) => {
+        this.waitingSince = null
         try {
           const goOn = filled(bytes)
-          if (goOn === true) return true
+          if (goOn === true) return wait()
           if (goOn === false) end()
-          else void goOn.then(more => more ? void socket.resume() : end(), end)
+          else void goOn.then(more => more ? wait() && void socket.resume() : end(), end)
         } catch (error) {
           end(error)
         }
@@ -77,6 +90,7 @@ export class PixelPipe {
       const options: SocketConstructorOpts & { onread: OnReadOpts } = { fd: this.readEnd, readable: true, writable: false, onread: { buffer: memory, callback } }
       const socket: Socket = new Socket(options)
       socket.on('error', end).on('end', () => end()).on('close', () => end())
+      wait()
       socket.resume()
     })
   }

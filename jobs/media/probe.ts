@@ -30,7 +30,9 @@ export interface ProbeResult {
  * @throws MediaError whose message says what is wrong with the file and what to do
  */
 export async function probeClip(path: string, settings: { transfer: Transfer, range: CodeRange }, signal?: AbortSignal): Promise<ProbeResult> {
-  if ((await stat(path)).size === 0) throw new MediaError('file-empty', 'The file is empty. Upload the clip again from the card.')
+  const file = await stat(path)
+  if (!file.isFile()) throw new MediaError('not-video', 'This is not a file. Upload the clip as the camera recorded it.')
+  if (file.size === 0) throw new MediaError('file-empty', 'The file is empty. Upload the clip again from the card.')
   const container = await openContainer(path, signal)
   const { video, audioTracks } = await probeStreams(path)
   assertMeasurable(video)

@@ -1,4 +1,5 @@
 import { editListOptions, inputFile, inputLimits, runProcess } from './ffmpegProcess'
+import { passLimits } from './processLimits'
 
 const slice = 1
 const resetSlice = 5
@@ -30,7 +31,7 @@ export async function scanRecoveryPoints(path: string, container: string, keyPac
     '-nostdin', '-hide_banner', '-v', 'error', ...inputLimits, ...editListOptions(container), '-i', inputFile(path),
     '-map', '0:V:0', '-c', 'copy', '-copyinkf', '-bsf:v', 'noise=drop=not(key),filter_units=pass_types=1|5|6,h264_mp4toannexb', '-f', 'h264', 'pipe:1',
   ], {
-    signal,
+    signal, ...await passLimits(path),
     onOutput: async (stdout) => {
       let rest: Uint8Array = new Uint8Array(0)
       for await (const chunk of stdout as AsyncIterable<Uint8Array>) rest = splitUnits(Buffer.concat([rest, chunk]), unit)

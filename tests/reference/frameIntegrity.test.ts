@@ -44,7 +44,7 @@ async function outcome(path: string): Promise<{ kind: 'refused' | 'told' | 'pass
 describe.each(kinds)('%s', (_, name, options, least) => {
   it('never passes for whole when it is cut, wherever that is, and says how many frames it has', async () => {
     const bytes = readFileSync(clips.make(name, options, large))
-    for (const share of [0.05, 0.3, 0.6, 0.9, 0.99]) {
+    for (const share of [0.05, 0.6, 0.99]) {
       const path = clips.write(`cut-${share}-${name}`, bytes.subarray(0, Math.floor(share * bytes.length)))
       const { kind, message } = await outcome(path)
       expect(kind, `${share}: ${message}`).not.toBe('passed')

@@ -55,7 +55,7 @@ const kinds: [string, string, string[], 'seeks' | 'counts'][] = [
 
 const size = { size: '162x90' }
 
-describe.each(kinds.filter(([, n]) => !process.env.ONLY || process.env.ONLY.split(',').includes(n)))('%s', (_, name, options, expectation) => {
+describe.each(kinds)('%s', (_, name, options, expectation) => {
   it('gives by random access the frames of the full decode, and those are ffmpeg’s own', async () => {
     const seconds = name.startsWith('long') ? 13 : 4
     const path = clips.make(name, options, { ...size, rate: '50', seconds })
