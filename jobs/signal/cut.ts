@@ -3,6 +3,7 @@ import { withoutExcluded, type ExcludedFrames } from './cutExcluded'
 import { frameLossFlag, groupFlags, planFlags, repetitionFlags } from './cutFlags'
 import { assignLines } from './cutLines'
 import { findEarlier, keepSlackSeconds, stillRight } from './cutKeep'
+import { splitLong } from './cutLong'
 import { nameGroups } from './cutNames'
 import { placeRegimes, type Placed } from './cutRepetitions'
 import { framesInside, type FrameSpan } from './cutSpans'
@@ -36,7 +37,7 @@ export interface CutResult {
  * A frame belongs to a regime when its exposure window, widened by the guard on both sides, lies wholly inside it; all
  * others are left out. Lines, repetitions and roles follow from the regimes (`assignLines`, `placeRegimes`); of every
  * phase group the part, at least 90 % of it, with the least whole-period error is kept (`chooseWholePeriods`). A group that
- * excluded frames divide is its larger side; where that is less than half of a lit group, all groups of the repetition are
+ * excluded frames divide is its larger side, one too long for an exact sum becomes several; where that is less than half of a lit group, all groups of the repetition are
  * flagged `frame-loss` and not accepted.
  *
  * @returns groups in order of their first frame, ids such as `l1-r2-p90`, `l1-r2-ref`, `l1-r2-dark` (`-2` for a second one
@@ -59,9 +60,11 @@ export function cutFrames(input: CutInput): CutResult {
     if (regime.kind !== 'dark' && inside.count < whole.count / 2) damaged.set(repetitionKey(group), group)
     if (group.frameCount > 0) {
       group.flags = groupFlags(group, regime, exposureSeconds, place.line.planned !== null, plan.length > 0)
-      groups.push(group)
-      const match = findEarlier(group, keep)
-      if (match) earlier.set(group, match)
+      for (const part of splitLong(group)) {
+        groups.push(part)
+        const match = findEarlier(part, keep)
+        if (match) earlier.set(part, match)
+      }
     } else if (regime.kind !== 'dark' && whole.count === 0) {
       flags.push(outsideFlag(regime, starts, exposureSeconds))
     }
