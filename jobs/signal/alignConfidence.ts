@@ -130,7 +130,9 @@ function uniqueness(problem: AlignProblem, best: Polished, second: Polished): { 
   const correlation = frameCorrelation(errors)
   const nats = explainedNats(problem, errors, correlation) - explainedNats(problem, errorsOf(problem, second), correlation)
   const ratio = Math.max(1, Math.exp(nats / problem.light.length))
-  return { ratio, grade: Math.min(1, Math.max(0, (ratio - 1) / 0.15)) * Math.min(1, Math.max(0, (nats - 10) / 50)) }
+  // The few frames of a glance choose among all places of the record, and a second look costs little.
+  const enough = problem.sparse ? (nats - 30) / 100 : (nats - 10) / 50
+  return { ratio, grade: Math.min(1, Math.max(0, (ratio - 1) / 0.15)) * Math.min(1, Math.max(0, enough)) }
 }
 
 /**

@@ -32,7 +32,7 @@ export function glanceFigures(cases = 100, firstSeed = 1001, onCase: (line: stri
     let found = alignClip(input)
     let decoded = plan.decodedFrames
     let rounds = 0
-    for (; rounds < 2 && found.confidence < alignmentReviewBelow; rounds++) {
+    for (; rounds < 3 && found.confidence < alignmentReviewBelow; rounds++) {
       const more = planMoreWindows(input, found)
       if (!more.windows.length) break
       decoded += more.decodedFrames
