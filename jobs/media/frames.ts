@@ -78,7 +78,7 @@ export function lumaArguments(path: string, container: string, { threads, input 
   return [
     '-nostdin', '-hide_banner', '-v', 'error', '-noautorotate', '-threads', String(threads ?? defaultThreads()),
     ...inputLimits, ...editListOptions(container), ...input, '-i', inputFile(path),
-    '-map', '0:V:0', '-an', '-sn', '-dn', '-vf', [...filters, 'extractplanes=y', 'settb=1/1000', 'setpts=N'].join(','), '-enc_time_base', '1/1000', '-fps_mode', 'passthrough', '-autoscale', '0',
+    '-map', '0:V:0', '-an', '-sn', '-dn', '-vf', ['extractplanes=y', ...filters, 'settb=1/1000', 'setpts=N'].join(','), '-enc_time_base', '1/1000', '-fps_mode', 'passthrough', '-autoscale', '0',
     ...output, '-f', 'rawvideo', 'pipe:1',
   ]
 }
