@@ -37,7 +37,7 @@ export function repetitionResiduals(groups: readonly Group[], integrals: Float64
   return new Map(repetitions.map((repetition) => {
     const plan = planOfOthers(groups, integrals, repetition)
     const own = lit.filter(g => groups[g].repetition === repetition && Number.isFinite(integrals[3 * g]))
-    if (!plan || plan.degreesOfFreedom < 1 || !own.length) return [repetition, null]
+    if (!plan || !plan.litFreedom || !own.length) return [repetition, null]
     const expected = scatter(plan, groups.length, gram)
     const found = own.reduce((sum, g) => sum + predictionError(plan, groups, integrals, gram, g), 0) / own.length
     return [repetition, expected > 0 && found >= 0 ? Math.sqrt(found / expected) : null]
@@ -53,17 +53,22 @@ function planOfOthers(groups: readonly Group[], integrals: Float64Array, repetit
   }
 }
 
-/** Variance of one sum, from the residuals of the plan's own groups; times the pixels of the sample. */
-function scatter({ used, matrix, inverse, columns, degreesOfFreedom }: SolvePlan, count: number, gram: Float64Array): number {
+/** Variance of one lit sum, from the residuals of the plan's own lit groups; times the pixels of the sample. */
+function scatter({ used, matrix, inverse, columns, litRows, litFreedom }: SolvePlan, count: number, gram: Float64Array): number {
+  const squares = litRows.reduce((sum, row) => {
+    const weights = new Float64Array(count)
+    weights[used[row]] = 1
+    for (let column = 0; column < used.length; column++) for (let k = 0; k < columns; k++) weights[used[column]] -= matrix[row * columns + k] * inverse[k * used.length + column]
+    return sum + quadratic(weights, gram)
+  }, 0)
+  return squares / litFreedom
+}
+
+function quadratic(weights: Float64Array, gram: Float64Array): number {
+  const count = weights.length
   let sum = 0
-  for (let row = 0; row < used.length; row++) {
-    for (let column = 0; column < used.length; column++) {
-      let hat = 0
-      for (let k = 0; k < columns; k++) hat += matrix[row * columns + k] * inverse[k * used.length + column]
-      sum += ((row === column ? 1 : 0) - hat) * gram[used[row] * count + used[column]]
-    }
-  }
-  return sum / degreesOfFreedom
+  for (let a = 0; a < count; a++) for (let b = 0; b < count; b++) sum += weights[a] * weights[b] * gram[a * count + b]
+  return sum
 }
 
 /** Mean square of group g minus its prediction, over what the prediction's own variance adds; times the pixels of the sample. */
@@ -73,8 +78,6 @@ function predictionError({ used, inverse, columns, covariance }: SolvePlan, grou
   const weights = new Float64Array(count)
   weights[g] = 1
   used.forEach((other, column) => row.forEach((value, k) => weights[other] -= value * inverse[k * used.length + column]))
-  let error = 0
-  for (let a = 0; a < count; a++) for (let b = 0; b < count; b++) error += weights[a] * weights[b] * gram[a * count + b]
   const variance = row.reduce((sum, value, a) => sum + row.reduce((inner, other, b) => inner + value * other * covariance[a * columns + b], 0), 0)
-  return error / (1 + variance)
+  return quadratic(weights, gram) / (1 + variance)
 }

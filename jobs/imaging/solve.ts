@@ -23,7 +23,7 @@ export interface FrameSetSolution {
   q: Float32Array
   /** Ambient light and black level, counts per frame; null without accepted dark groups. */
   ambient: Float32Array | null
-  /** Standard deviation of one group's sum, in counts, from the residual; NaN without degrees of freedom. */
+  /** Standard deviation of one lit group's sum, in counts, from the lit groups' residuals; NaN when they leave no freedom. */
   noise: Float32Array
   degreesOfFreedom: number
   /** Of the [A, C, S] rows of the accepted lit groups. */
@@ -53,6 +53,9 @@ export interface SolvePlan {
   /** [columns, U] row-major. */
   inverse: Float64Array
   degreesOfFreedom: number
+  /** Rows of the lit groups, and the freedom that they leave: Σ (1 − leverage). Dark groups scatter far less than lit ones, so they say nothing about their noise. */
+  litRows: number[]
+  litFreedom: number
   conditionNumber: number
   /** [columns, columns] row-major. */
   covariance: Float64Array
@@ -70,6 +73,8 @@ export interface BandImages {
 
 /** Beyond this, p and q are noise: a lamp modulated by less than about a hundredth, or two phases that are nearly one. */
 const largestConditionNumber = 1000
+/** Less than this is rounding, or what dark groups leave of one repetition. */
+const leastFreedom = 0.5
 const blockPixels = 4096
 
 /**
@@ -109,7 +114,9 @@ export function planSolution(input: Omit<FrameSetInput, 'sums' | 'width' | 'heig
   const conditionNumber = assertSolvable(input, used)
   const solved = pseudoInverse(matrix, used.length, columns)
   if (!solved) throw new SolveError('ill-conditioned', 'The groups do not tell scene and ambient light apart. Leave the dark groups out, or add lit groups.')
-  return { used, columns, matrix, inverse: solved.inverse, degreesOfFreedom: used.length - columns, conditionNumber, covariance: gram(solved.inverse, columns) }
+  const litRows = used.flatMap((g, row) => roles[g] === 'dark' ? [] : [row])
+  const freedom = litRows.reduce((sum, row) => sum + 1 - leverage(matrix, solved.inverse, row, columns), 0)
+  return { used, columns, matrix, inverse: solved.inverse, litRows, litFreedom: freedom < leastFreedom ? 0 : freedom, degreesOfFreedom: used.length - columns, conditionNumber, covariance: gram(solved.inverse, columns) }
 }
 
 /** rms over the pixels of each group's residual / √(1 − leverage), from the sums of squares of all bands; NaN where not accepted. */
@@ -146,11 +153,11 @@ function assertSolvable({ roles, integrals }: Omit<FrameSetInput, 'sums' | 'widt
  * of threads, has the same bits as one solved at once.
  *
  * @param sums of the plan's used groups, each as long as the images
- * @param images written in place; `noise` becomes NaN without degrees of freedom
+ * @param images written in place; `noise` becomes NaN when the lit groups leave no freedom
  * @param squares of each used group: Σ over these pixels of its squared residual is added; left out, it is not computed
  */
 export function solveBand(plan: SolvePlan, sums: readonly Uint32Array[], images: BandImages, squares?: Float64Array): void {
-  const { columns, degreesOfFreedom } = plan
+  const { columns, litRows, litFreedom } = plan
   const pixels = images.noise.length
   const [weights, rows] = [weightsOf(plan), rowsOf(plan)]
   const block = new Float64Array(4 * blockPixels)
@@ -162,11 +169,9 @@ export function solveBand(plan: SolvePlan, sums: readonly Uint32Array[], images:
     variance.fill(0)
     for (let g = 0; g < sums.length; g += 2) addPair(block, sums[g], sums[g + 1] ?? sums[g], from, length, weights, 4 * g)
     targets.forEach((image, k) => image?.set(block.subarray(k * blockPixels, k * blockPixels + length), from))
-    if (degreesOfFreedom > 0) {
-      for (let g = 0; g < sums.length; g += 2) addResiduals(variance, sums[g], sums[g + 1] ?? sums[g], g + 1 < sums.length ? 1 : 0, from, length, block, rows, 4 * g)
-      if (squares) for (let g = 0; g < sums.length; g++) squares[g] += squaredResiduals(sums[g], from, length, block, rows, 4 * g)
-    }
-    for (let i = 0; i < length; i++) images.noise[from + i] = degreesOfFreedom > 0 ? Math.sqrt(variance[i] / degreesOfFreedom) : Number.NaN
+    if (squares) for (let g = 0; g < sums.length; g++) squares[g] += squaredResiduals(sums[g], from, length, block, rows, 4 * g)
+    if (litFreedom > 0) for (let k = 0; k < litRows.length; k += 2) addResiduals(variance, sums, litRows[k], litRows[k + 1], from, length, block, rows)
+    for (let i = 0; i < length; i++) images.noise[from + i] = litFreedom > 0 ? Math.sqrt(variance[i] / litFreedom) : Number.NaN
   }
 }
 
@@ -201,10 +206,15 @@ function addPair(block: Float64Array, first: Uint32Array, second: Uint32Array, f
   }
 }
 
-/** Adds the squared residuals of two groups to each pixel's; of the first alone when `paired` is 0. */
-function addResiduals(variance: Float64Array, first: Uint32Array, second: Uint32Array, paired: number, from: number, length: number, block: Float64Array, rows: Float64Array, at: number): void {
+/** Adds the squared residuals of two groups, or of the last one alone, to each pixel's. */
+function addResiduals(variance: Float64Array, sums: readonly Uint32Array[], one: number, other: number | undefined, from: number, length: number, block: Float64Array, rows: Float64Array): void {
+  if (other === undefined) addResidualPair(variance, sums[one], sums[one], 0, from, length, block, rows, 4 * one, 4 * one)
+  else addResidualPair(variance, sums[one], sums[other], 1, from, length, block, rows, 4 * one, 4 * other)
+}
+
+function addResidualPair(variance: Float64Array, first: Uint32Array, second: Uint32Array, paired: number, from: number, length: number, block: Float64Array, rows: Float64Array, at: number, to: number): void {
   const [a1, c1, s1, n1] = [rows[at], rows[at + 1], rows[at + 2], rows[at + 3]]
-  const [a2, c2, s2, n2] = [rows[at + 4], rows[at + 5], rows[at + 6], rows[at + 7]]
+  const [a2, c2, s2, n2] = [rows[to], rows[to + 1], rows[to + 2], rows[to + 3]]
   for (let i = 0; i < length; i++) {
     const s = block[i]
     const p = block[blockPixels + i]

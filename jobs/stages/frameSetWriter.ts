@@ -107,7 +107,7 @@ async function solveBands(plan: SolvePlan, sources: SumSource[], { width, height
 function noiseShare(plan: SolvePlan, groups: Group[], sources: SumSource[], noise: SumSource, width: number, height: number): number | null {
   const lit = groups.findIndex(group => group.role !== 'dark' && group.frameCount > 0)
   const level = medianOf(sampleRows(sources[lit]!, width, height))
-  if (plan.degreesOfFreedom < 1 || !(level > 0)) return null
+  if (!plan.litFreedom || !(level > 0)) return null
   return medianOf(new Float32Array(sampleRows(noise, width, height).buffer)) / level
 }
 

@@ -43,7 +43,8 @@ condition = float(np.linalg.cond(M[lit]))
 if ${columns} == 4: M = np.hstack([M, N])
 x, rss, rank, _ = np.linalg.lstsq(M, I, rcond=None)
 r = I - M @ x
-noise = np.sqrt((r ** 2).sum(0) / (len(M) - ${columns}))
+hat = np.diag(M @ np.linalg.pinv(M))
+noise = np.sqrt((r[lit] ** 2).sum(0) / (1 - hat[lit]).sum())
 print(json.dumps({'x': x.tolist(), 'noise': noise.tolist(), 'condition': condition, 'covariance': np.linalg.inv(M.T @ M).ravel().tolist()}))`)
     const ours = [solution.scene, solution.p, solution.q, ...solution.ambient ? [solution.ambient] : []]
     expect(ours.length).toBe(columns)

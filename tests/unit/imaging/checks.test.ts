@@ -204,6 +204,17 @@ describe('review of a line', () => {
     }
   })
 
+  it('does not take the little scatter of dark groups for that of lit ones', async () => {
+    const input = line(2)
+    const next = random(9)
+    const darks = Array.from({ length: 3 }, (_, k): Group => ({ ...input.groups[0], id: `dark-${k}`, role: 'dark', firstFrame: 300 + 10 * k, frameCount: 10 }))
+    const longer = (column: ArrayLike<number>) => Float64Array.from({ length: 330 }, (_, i) => column[i] ?? 0)
+    const sums = [...input.sums, ...darks.map(() => Uint32Array.from({ length: width * height }, () => 100 + 3 * next()))]
+    const { rejected, checks } = await review({ ...input, groups: [...input.groups, ...darks], integrals: Float64Array.from([...input.integrals, ...darks.flatMap(() => [0, 0, 0])]), sums, meter: { light: longer(input.meter.light), clipped: longer([]), black: longer([]) } })
+    expect(rejected).toEqual([])
+    expect(checks.filter(({ checkId }) => checkId === 'residual').map(({ value }) => value)).toEqual([null, null])
+  })
+
   it('keeps the dark groups of a rejected repetition', async () => {
     const input = line(3, [{ repetition: 1, from: 0, dx: 0.3, stays: false }])
     const dark: Group = { ...input.groups[0], id: 'dark', role: 'dark', firstFrame: 450, frameCount: 10 }
