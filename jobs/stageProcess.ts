@@ -50,7 +50,8 @@ export interface StageRun {
 
 /** Starts a stage in a worker thread. After `abort` it has four seconds to end before it is terminated. */
 export function runInWorker(entry: string, task: WorkerTask, onProgress: (progress: Progress) => void, onLog: (line: string) => void): StageRun {
-  const worker = new Worker(entry, { workerData: task })
+  // The pixel pipe's end is closed by its socket: a second closing at the thread's end would hit somebody else's file.
+  const worker = new Worker(entry, { workerData: task, trackUnmanagedFds: false })
   let timer: NodeJS.Timeout | undefined
   const result = new Promise<StageResult>((resolve, reject) => {
     worker.on('message', (message: WorkerMessage) => {

@@ -10,10 +10,11 @@ import { publishAlignment, type FoundAlignment } from './alignments'
 import { clipPathsOf, openClip, type ClipPaths } from './clipSource'
 import { decodeClip } from './decode'
 import { exposureOf, factsOf, pathOf, readFloat32, readFloat64 } from './inputs'
+import { alignByGlances, glanceSuffices } from './glanceAlign'
 import { keepLight } from './keepLight'
 import { emptyLight, readLightFile, timingLight, writeLight } from './lightFile'
 import { defineStage, type StageHelpers, type StageResult } from './stage'
-import { lightSink } from './sumFiles'
+import { lightSink, type ClipSource } from './sumFiles'
 
 interface Payload {
   source: ClipPaths
@@ -28,9 +29,6 @@ interface Payload {
   /** A person's alignment is judged, not searched. */
   manual: { version: number, offsetSeconds: number, driftPpm: number } | null
 }
-
-/** Enough for a start: the sum stage aligns anew with every frame and corrects what follows, so a wrong start costs time only. */
-const glanceSuffices = 0.4
 
 interface Result extends StageResult {
   alignment: FoundAlignment
@@ -66,10 +64,11 @@ export const align = defineStage<Payload, Result>({
       exposureSeconds, sampleRateHz, darkLevel,
     }
     const files: Record<string, string> = {}
-    let result = manual ? judgeAlignment(input, manual) : alignClip(input)
+    const source = await openClip(payload.source)
+    let result = manual ? judgeAlignment(input, manual) : await alignByGlances(source, input, helpers)
     let from: 'manual' | 'glance' | 'all' = manual ? 'manual' : 'glance'
     if (!manual && result.confidence < glanceSuffices) {
-      const all = await lightOfAll(payload, helpers, files)
+      const all = await lightOfAll(source, light, helpers, files)
       result = alignClip({ ...input, frameLight: all })
       from = 'all'
     }
@@ -88,13 +87,12 @@ export const align = defineStage<Payload, Result>({
 })
 
 /** Every frame's light: as it was measured before, or by decoding the clip now. */
-async function lightOfAll({ light, source }: Payload, helpers: StageHelpers, files: Record<string, string>): Promise<Float64Array> {
+async function lightOfAll(source: ClipSource, light: string | null, helpers: StageHelpers, files: Record<string, string>): Promise<Float64Array> {
   if (light) return timingLight(await readLightFile(light))
   helpers.log('The glance does not settle the alignment, so every frame is measured.')
-  const opened = await openClip(source)
-  const measured = emptyLight(opened.clip.frameCount, opened.lampPatch !== null)
-  const sink = lightSink(opened, measured)
-  await decodeClip(opened.path, opened.clip, helpers, sink)
+  const measured = emptyLight(source.clip.frameCount, source.lampPatch !== null)
+  const sink = lightSink(source, measured)
+  await decodeClip(source.path, source.clip, helpers, sink)
   sink.finish()
   files.light = join(helpers.workDir, 'light.npz')
   await writeLight(files.light, measured)
