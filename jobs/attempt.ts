@@ -9,7 +9,7 @@ import type { PipelineStage } from '../shared/states'
 import { advanceWithin } from './queue/advance'
 import { inputsKey, keyOf, loadSituation } from './queue/inputs'
 import { heartbeatSeconds, type Claim, type Outcome, type Progress, type Queue } from './queue/queue'
-import { failureOf, runInWorker, type Failure, type StageRun } from './stageProcess'
+import { failureOf, prepareWorker, runInWorker, type Failure, type StageRun } from './stageProcess'
 import { stageDefinitions } from './stages'
 import type { StageResult } from './stages/stage'
 import { loadVerify, publishRefused, publishVerified, storeVerified } from './stages/verify'
@@ -58,6 +58,7 @@ export class Attempt {
       this.run = runInWorker(this.context.workerEntry, { stage: this.claim.stage, payload: prepared.payload, workDir }, progress => this.progress = progress, line => this.note(line))
       if (this.ending) this.run.abort()
       const result = await this.run.result
+      prepareWorker(this.context.workerEntry)
       if (this.ending) await this.settleEnding()
       else await this.settleResult(prepared, result)
     } catch (error) {
@@ -111,10 +112,8 @@ export class Attempt {
     const folder = `results/${this.claim.acquisitionId}/${this.claim.stage}/${this.claim.jobId}-${this.claim.attempt}`
     const keys: Record<string, string> = {}
     if (this.claim.stage === 'verify') await storeVerified(prepared.payload as Parameters<typeof storeVerified>[0], incoming, store)
-    for (const [name, path] of Object.entries(result.files)) {
-      keys[name] = `${folder}/${name}`
-      await store.put(keys[name], path)
-    }
+    for (const name of Object.keys(result.files)) keys[name] = `${folder}/${name}`
+    await store.putAll(Object.entries(result.files).map(([name, localPath]) => ({ key: keys[name]!, localPath })))
     const replaced = this.claim.stage === 'verify' ? [] : await this.outputFiles(this.claim.stage)
     const settled = await this.settle({ state: result.state, message: result.message }, transaction => prepared.publish(transaction, result, keys))
     // Intermediate files of the output that this one replaced; frame set files have rows of their own and stay.

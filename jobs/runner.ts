@@ -17,6 +17,7 @@ import { createLocalFileStore, storeFolders } from '../server/store/fileStore'
 import { Attempt } from './attempt'
 import { createQueue, resumeDiskHolds } from './queue/mariadbQueue'
 import { leaseSeconds } from './queue/queue'
+import { prepareWorker } from './stageProcess'
 
 const databaseUrl = process.env.LAMPSUM_DATABASE_URL
 const dataDir = process.env.LAMPSUM_DATA_DIR
@@ -140,5 +141,7 @@ process.on('SIGTERM', () => void stop('SIGTERM'))
 process.on('SIGINT', () => void stop('SIGINT'))
 // The start script is gone: nothing supervises this process any more.
 process.on('disconnect', () => void stop('the start script is gone'))
+const workerEntry = join(dirname(fileURLToPath(import.meta.url)), 'stageWorker.mjs')
+prepareWorker(workerEntry)
 log(`Runner ${name} is ready with ${slots} slots`)
-await claimLoop({ database, queue, store, incoming: folders.incoming, work: join(folders.work, id), workerEntry: join(dirname(fileURLToPath(import.meta.url)), 'stageWorker.mjs') })
+await claimLoop({ database, queue, store, incoming: folders.incoming, work: join(folders.work, id), workerEntry })

@@ -23,6 +23,8 @@ export type WorkerMessage
     | { kind: 'result', result: StageResult }
     | { kind: 'failure', failure: Failure }
 
+export type WorkerOrder = { kind: 'task', task: WorkerTask } | { kind: 'abort' }
+
 export class StageFailure extends Error {
   override name = 'StageFailure'
   constructor(readonly failure: Failure) {
@@ -48,10 +50,38 @@ export interface StageRun {
   abort: () => void
 }
 
-/** Starts a stage in a worker thread. After `abort` it has four seconds to end before it is terminated. */
+/**
+ * A worker thread that is loaded already: a stage of a few milliseconds should not wait for its program. One is kept
+ * in reserve for each entry.
+ */
+const reserve = new Map<string, Worker>()
+
+// The pixel pipe's end is closed by its socket: a second closing at the thread's end would hit somebody else's file.
+const startWorker = (entry: string) => new Worker(entry, { trackUnmanagedFds: false })
+
+export function prepareWorker(entry: string): void {
+  if (reserve.has(entry)) return
+  const worker = startWorker(entry)
+  const forget = () => {
+    if (reserve.get(entry) === worker) reserve.delete(entry)
+  }
+  worker.once('error', forget)
+  worker.once('exit', forget)
+  worker.unref()
+  reserve.set(entry, worker)
+}
+
+function takeWorker(entry: string): Worker {
+  const worker = reserve.get(entry) ?? startWorker(entry)
+  reserve.delete(entry)
+  worker.ref()
+  return worker
+}
+
+/** Runs a stage in a worker thread. After `abort` it has four seconds to end before it is terminated. */
 export function runInWorker(entry: string, task: WorkerTask, onProgress: (progress: Progress) => void, onLog: (line: string) => void): StageRun {
-  // The pixel pipe's end is closed by its socket: a second closing at the thread's end would hit somebody else's file.
-  const worker = new Worker(entry, { workerData: task, trackUnmanagedFds: false })
+  const worker = takeWorker(entry)
+  worker.postMessage({ kind: 'task', task } satisfies WorkerOrder)
   let timer: NodeJS.Timeout | undefined
   const result = new Promise<StageResult>((resolve, reject) => {
     worker.on('message', (message: WorkerMessage) => {
@@ -66,7 +96,7 @@ export function runInWorker(entry: string, task: WorkerTask, onProgress: (progre
   return {
     result,
     abort() {
-      worker.postMessage('abort')
+      worker.postMessage({ kind: 'abort' } satisfies WorkerOrder)
       timer ??= setTimeout(() => void worker.terminate(), 4000)
     },
   }

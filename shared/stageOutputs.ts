@@ -39,8 +39,11 @@ export interface StageFacts {
     frameCount: number
     /** The alignment was made anew with every frame's light. */
     refined: boolean
+    /** Output of the align stage that it started from. */
+    alignKey: string
     alignment: { version: number, offsetSeconds: number, driftPpm: number, losses: FrameLoss[] }
-    spans: { id: string, firstFrame: number, frameCount: number }[]
+    /** Of each sum: its frames, and SHA-256 and CRC-32 of its bytes. */
+    spans: { id: string, firstFrame: number, frameCount: number, sha256: string, crc: number }[]
   }
   check: { frameSetIds: string[] }
 }

@@ -32,3 +32,29 @@ export function crc32(bytes: Uint8Array, previous = 0): number {
   for (; i < bytes.length; i++) crc = (crc >>> 8) ^ t0[(crc ^ bytes[i]) & 0xff]
   return ~crc >>> 0
 }
+
+/** Product of a 32 × 32 matrix over GF(2), one column a word, and a vector. */
+function timesVector(matrix: Uint32Array, vector: number): number {
+  let sum = 0
+  for (let bit = 0; vector !== 0; vector >>>= 1, bit++) if (vector & 1) sum ^= matrix[bit]
+  return sum >>> 0
+}
+
+const squared = (matrix: Uint32Array) => matrix.map(column => timesVector(matrix, column))
+
+/**
+ * CRC-32 of two pieces one after another, from the CRC of each.
+ *
+ * Appending zeros is linear over GF(2), so the first piece's CRC is moved on by `secondBytes` zeros through squarings of
+ * the operator of a single zero bit (the method of zlib's crc32_combine).
+ */
+export function combineCrc32(first: number, second: number, secondBytes: number): number {
+  let operator: Uint32Array = Uint32Array.from({ length: 32 }, (_, bit) => bit === 0 ? 0xedb88320 : 2 ** (bit - 1))
+  for (let doubling = 0; doubling < 3; doubling++) operator = squared(operator)
+  let moved = first
+  for (let bytes = secondBytes; bytes > 0; bytes = Math.floor(bytes / 2)) {
+    if (bytes % 2) moved = timesVector(operator, moved)
+    operator = squared(operator)
+  }
+  return (moved ^ second) >>> 0
+}

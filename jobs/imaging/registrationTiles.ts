@@ -2,7 +2,7 @@ import type { Rectangle } from './accumulate'
 
 /** Interpolation and derivative reach this far. */
 export const filterReach = 10
-const tileSize = 128
+const tileSize = 96
 
 /**
  * Parts of a picture to register by: the whole of a small one, nine tiles spread over a large one. Each keeps clear of

@@ -13,14 +13,17 @@ const resetUnits: Record<string, string> = { h264: '5', hevc: '16-21' }
  * Of the key frames that the container marks, those where decoding can begin and be exact for every later frame in
  * display order. In H.264 and H.265 the mark alone says too little, so the packets are looked into, without decoding.
  */
-export async function findEntryFrames(path: string, container: string, codec: string, packets: PacketList, signal?: AbortSignal): Promise<{ entryFrames: Int32Array, needsRunUp: boolean }> {
+export async function findEntryFrames(path: string, container: string, codec: string, listing: Promise<PacketList>, signal?: AbortSignal): Promise<{ entryFrames: Int32Array, needsRunUp: boolean }> {
   const none = { entryFrames: new Int32Array(0), needsRunUp: false }
+  const looking = Object.hasOwn(resetUnits, codec) ? resetTicks(path, container, resetUnits[codec], signal) : null
+  looking?.catch(() => {})
+  const packets = await listing
   const { keyFrames, ticks } = packets
   // Without times of its own, a frame that comes out of the decoder can only be told by counting from the start.
   if (packets.untimed || (packets.decodeTimesOnly && keyFrames.length !== ticks.length)) return none
   if (exactKeyFrames.has(codec)) return { entryFrames: distinct(ticks, keyFrames), needsRunUp: false }
-  if (!Object.hasOwn(resetUnits, codec)) return none
-  const resets = await resetTicks(path, container, resetUnits[codec], signal)
+  if (!looking) return none
+  const resets = await looking
   const atReset = keyFrames.filter(frame => resets.has(ticks[frame]))
   if (codec === 'hevc' || atReset.length === keyFrames.length) return { entryFrames: distinct(ticks, atReset), needsRunUp: false }
   const exact = await scanRecoveryPoints(path, container, keyFrames.length, signal)

@@ -8,7 +8,7 @@ import { examineFileEnd, type FileEnd } from './fileEnd'
 import type { FrameIndex } from './frameIndex'
 import { MediaError } from './mediaError'
 import { openContainer } from './openContainer'
-import { listPackets } from './packets'
+import { listPackets, type PacketList } from './packets'
 import { lumaFormats } from './pixelFormats'
 import { probeStreams, type VideoStream } from './streams'
 import { judgeTimes } from './timestamps'
@@ -34,11 +34,26 @@ export async function probeClip(path: string, settings: { transfer: Transfer, ra
   if (!file.isFile()) throw new MediaError('not-video', 'This is not a file. Upload the clip as the camera recorded it.')
   if (file.size === 0) throw new MediaError('file-empty', 'The file is empty. Upload the clip again from the card.')
   const container = await openContainer(path, signal)
+  // The packets are listed while the header is read and the packets are looked into: each is a pass over the whole file.
+  const stop = new AbortController()
+  const within = signal ? AbortSignal.any([signal, stop.signal]) : stop.signal
+  const listing = listPackets(path, container, within)
+  try {
+    return await describeClip(path, container, settings, listing, within)
+  } finally {
+    stop.abort()
+    await listing.catch(() => {})
+  }
+}
+
+async function describeClip(path: string, container: string, settings: { transfer: Transfer, range: CodeRange }, listing: Promise<PacketList>, signal: AbortSignal): Promise<ProbeResult> {
   const { video, audioTracks } = await probeStreams(path)
   assertMeasurable(video)
+  const entries = findEntryFrames(path, container, video.codec, listing, signal)
+  entries.catch(() => {})
   const range = resolveRange(settings.range, video.colourRange, lumaFormats[video.pixelFormat].isGray)
   const transfer = resolveTransfer(settings.transfer, video.colourTransfer)
-  const packets = await listPackets(path, container, signal)
+  const packets = await listing
   const frameCount = packets.ticks.length
   if (frameCount === 0) throw new MediaError('no-frames', 'The file holds no video frames. Copy the clip again from the card.')
   const times = packets.untimed ? judgeTimes(packets.ticks, invert(video.frameRates[0]), video.frameRates) : judgeTimes(packets.ticks, video.timeBase, video.frameRates)
@@ -54,7 +69,7 @@ export async function probeClip(path: string, settings: { transfer: Transfer, ra
   }
   const end = await examineFileEnd(path, container)
   assertComplete(facts, video, end)
-  const index: FrameIndex = { timeBase: video.timeBase, ticks: packets.ticks, keyFrames: packets.keyFrames, ...await findEntryFrames(path, container, video.codec, packets, signal) }
+  const index: FrameIndex = { timeBase: video.timeBase, ticks: packets.ticks, keyFrames: packets.keyFrames, ...await entries }
   return { facts, flags: [...range.flags, ...transfer.flags, ...times.flags, ...clipFlags(facts, video, packets, end)], frameTimesSeconds: times.frameTimesSeconds, index, frameBytes: packets.frameBytes }
 }
 

@@ -3,7 +3,7 @@ import { findSizeChanges, type SizeChange } from './sizeChanges'
 
 /** Frames in front of a change and behind it that a window takes in at least. */
 const before = 6
-const behind = 28
+const behind = 12
 const mostWindows = 4
 
 export interface ChangeGlanceInput {
@@ -19,14 +19,14 @@ export interface ChangeGlanceInput {
  * window ties the clip to the record to a small part of a frame, and edges far apart give the drift.
  *
  * Each window begins with a key frame, so that no frame is decoded in vain; windows are added while all of them together
- * cost no more than 5 % of the clip or 200 frames, but three are taken whatever they cost up to a fifth of the clip.
+ * cost no more than 4 % of the clip or 150 frames, but three are taken whatever they cost up to a fifth of the clip.
  *
  * @returns null where fewer than two changes show or they cost too much: look at windows spread evenly then
  */
 export function planChangeGlance({ frameCount, keyFrames, packetBytes }: ChangeGlanceInput): GlancePlan | null {
   const changes = findSizeChanges(packetBytes, keyFrames).slice(0, 16)
   const windows: GlancePlan['windows'] = []
-  const budget = Math.max(200, 0.05 * frameCount)
+  const budget = Math.max(150, 0.04 * frameCount)
   let cost = 0
   for (const { frame } of inOrderOfUse(changes, frameCount)) {
     const firstFrame = keyFrameBefore(keyFrames, Math.max(0, frame - before))

@@ -1,6 +1,7 @@
 import { randomUUID } from 'node:crypto'
 import { readFile } from 'node:fs/promises'
 import { and, eq, isNull, notInArray } from 'drizzle-orm'
+import PQueue from 'p-queue'
 import { frameSetFiles, frameSets } from '../../server/db/schema'
 import type { CheckResult } from '../../shared/checks'
 import type { FrameSetReview } from '../../shared/frameSetReview'
@@ -20,7 +21,9 @@ import { linesOf } from './cut'
 import { manifestBase, writeFrameSet, type SetFile } from './frameSetWriter'
 import { exposureOf, factsOf, pathOf, readFloat32, readFloat64 } from './inputs'
 import { provenanceOf, type Provenance } from './provenance'
+import { knownShifts } from './knownShifts'
 import { digestSums } from './solveFile'
+import { crcOfMember, type SumDigest } from './sumDigest'
 import { forceOver } from './solveForce'
 import { marksOf } from './solveIdentity'
 import { createSolvePool, type SolvePool } from './solvePool'
@@ -35,6 +38,8 @@ interface Payload {
   groups: Group[]
   cutListVersion: number
   sums: Record<string, string>
+  /** Of each sum, where the sum stage left them. */
+  digests?: Record<string, SumDigest>
   meter: string
   frameTimes: string
   illumination: string
@@ -68,18 +73,21 @@ interface Result extends StageResult {
   lines: LineResult[]
 }
 
+const linesAtOnce = 2
+
 /** Checks every repetition, leaves bumped ones out, solves each line and writes its frame set. */
 export const check = defineStage<Payload, Result>({
   async load(situation, store) {
     const groups = await cutListOf(situation, store)
     const { record, darkLevel } = factsOf(situation, 'record')
-    const { alignment, cutListVersion } = factsOf(situation, 'sum')
+    const { alignment, cutListVersion, spans } = factsOf(situation, 'sum')
     const used = groups.filter(group => group.frameCount > 0)
     return {
       clip: factsOf(situation, 'inspect').clip,
       groups: used,
       cutListVersion,
       sums: Object.fromEntries(used.map(group => [group.id, pathOf(situation, store, 'sum', sumFileName(group.id))])),
+      digests: Object.fromEntries(spans.map(({ id, sha256, crc }) => [id, { sha256, crc }])),
       meter: pathOf(situation, store, 'meter', 'light'),
       frameTimes: pathOf(situation, store, 'sum', 'frame-times'),
       illumination: pathOf(situation, store, 'record', 'illumination'),
@@ -99,12 +107,16 @@ export const check = defineStage<Payload, Result>({
     const timing: FrameTiming = { ...payload.alignment, exposureSeconds: payload.exposureSeconds, frameTimesSeconds: await readFloat64(payload.frameTimes) }
     const pool = createSolvePool()
     const results: LineResult[] = []
+    let finished = 0
     try {
-      for (const [index, { line, frequencyHz }] of lines.entries()) {
+      // Two at a time: while one line waits for its pictures the other reads and writes.
+      const queue = new PQueue({ concurrency: linesAtOnce })
+      results.push(...await Promise.all(lines.map(({ line, frequencyHz }) => queue.add(async () => {
         helpers.signal.throwIfAborted()
-        helpers.progress({ progress: index / lines.length })
-        results.push(await checkOne(payload, integrals, timing, line, frequencyHz, pool, helpers))
-      }
+        const result = await checkOne(payload, integrals, timing, line, frequencyHz, pool, helpers)
+        helpers.progress({ progress: ++finished / lines.length })
+        return result
+      }))))
     } finally {
       await pool.close()
     }
@@ -154,13 +166,14 @@ async function checkOne(payload: Payload, light: LightIntegrals, timing: FrameTi
   }))
   const forces = await Promise.all(groups.map(group => payload.force && group.role !== 'dark' ? forceOver(payload.force, payload.sampleRateHz, timing, frequencyHz, group) : null))
   const meter = meterColumns(await readFile(payload.meter))
-  const digest = await digestSums(sources, height, width)
+  const digest = payload.digests ? knownDigest(groups.map(group => payload.digests![group.id]!), height, width) : await digestSums(sources, height, width)
   const marks = marksOf({ line, frequencyHz, groups, integrals, forces, meter, sumsSha256: digest.sha256, provenance: payload.provenance })
   const prior = payload.prior.find(set => set.line === line) ?? null
   if (prior?.review?.identity === marks.identity) return { line, keep: prior.id, flags: prior.review.flags.map(flag => named(flag, line, frequencyHz)) }
   const before = decisionsThatHold(prior?.review ?? null, groups, marks.repetitionKeys)
   try {
-    const motion = await repetitionMotion(groups, (a, b) => pool.run({ kind: 'shift', a: sources[a]!, b: sources[b]!, width, height }))
+    const shifts = knownShifts(prior?.review?.shifts ?? [], digest.sha256, (a, b) => pool.run({ kind: 'shift', a: sources[a]!, b: sources[b]!, width, height }))
+    const motion = await repetitionMotion(groups, shifts.register)
     helpers.signal.throwIfAborted()
     const gram = gramOfSums(sources.map(source => sampleRows(source, width, height)))
     const usable = usableGroups(groups)
@@ -172,12 +185,14 @@ async function checkOne(payload: Payload, light: LightIntegrals, timing: FrameTi
     const manifest = await manifestBase(line, frequencyHz, payload.provenance, forces, digest.sha256)
     const { files, checks } = await writeFrameSet(helpers.workDir, { line, frequencyHz, groups: reviewed.groups, sources, sumsCrc: digest.crc, integrals, width, height, forces, checks: reviewed.checks, rejections, manifest }, pool)
     const flags = [...reviewed.flags, ...warningsOf(checks, reviewed.groups)]
-    return { line, flags: flags.map(flag => named(flag, line, frequencyHz)), set: { frequencyHz, groups: reviewed.groups, checks, files, review: { ...marks, usable, ...before, rejections, flags } } }
+    return { line, flags: flags.map(flag => named(flag, line, frequencyHz)), set: { frequencyHz, groups: reviewed.groups, checks, files, review: { ...marks, usable, ...before, rejections, flags, shifts: shifts.used } } }
   } catch (error) {
     if (!(error instanceof SolveError)) throw error
     return { line, flags: [named({ code: error.code, severity: 'problem', message: error.message }, line, frequencyHz)] }
   }
 }
+
+const knownDigest = (digests: SumDigest[], height: number, width: number) => ({ crc: crcOfMember(digests, height, width), sha256: digests.map(digest => digest.sha256) })
 
 function meterColumns(bytes: Uint8Array): MeterColumns {
   const { light, clipped, black } = readNpz(bytes)

@@ -3,10 +3,10 @@ import { readKeyFrames } from '../media/keyFrames'
 import { planGlance } from '../signal/glance'
 import { planChangeGlance } from '../signal/glanceWindows'
 import { clipPathsOf, openClip, type ClipPaths } from './clipSource'
-import { decodeRanges } from './decode'
 import { pathOf, readFloat64 } from './inputs'
 import { emptyLight, writeLight } from './lightFile'
 import { defineStage } from './stage'
+import { measureWindows } from './measureWindows'
 import { lightSink } from './sumFiles'
 
 interface Payload {
@@ -28,13 +28,12 @@ export const meter = defineStage<Payload>({
     const light = emptyLight(clip.frameCount, source.lampPatch !== null)
     const plan = planChangeGlance({ frameCount: clip.frameCount, keyFrames: index.entryFrames, packetBytes: await readFloat64(frameBytes) })
       ?? planGlance({ frameTimesSeconds: await readFloat64(frameTimes), keyFrames: index.entryFrames })
-    const sink = lightSink(source, light)
     if (plan.useKeyFrames) {
+      const sink = lightSink(source, light)
       await readKeyFrames(path, clip, index, { signal: helpers.signal, target: frame => sink.slot(frame) }, (_, frame) => sink.push(frame))
       sink.finish()
     }
-    await decodeRanges(path, clip, index, plan.windows, helpers, sink)
-    sink.finish()
+    await measureWindows(source, plan.windows, light, helpers)
     const file = join(helpers.workDir, 'glance.npz')
     await writeLight(file, light)
     const measured = light.light.filter(Number.isFinite)

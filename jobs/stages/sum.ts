@@ -24,8 +24,11 @@ interface Payload {
   cutListVersion: number
   manualCutList: boolean
   alignment: { version: number, offsetSeconds: number, driftPpm: number, losses: FrameLoss[] }
+  alignKey: string
   /** Made from a glance: to be made anew with every frame's light. */
   refine: boolean
+  /** What an earlier run has made of the same alignment and the same light. */
+  refined: RefinedBefore | null
   light: string | null
   bases: SumFile[]
   frameTimes: { read: string, aligned: string }
@@ -37,6 +40,12 @@ interface Payload {
   exposureSeconds: number
   guardSeconds: number
   plan: PlanLine[]
+}
+
+interface RefinedBefore {
+  alignment: Payload['alignment']
+  frameTimes: string
+  predicted: string
 }
 
 interface Result extends StageResult {
@@ -65,7 +74,9 @@ export const sum = defineStage<Payload, Result>({
       cutListVersion: version,
       manualCutList: manual,
       alignment: { version: alignment.version, offsetSeconds: alignment.offsetSeconds, driftPpm: alignment.driftPpm, losses: alignment.losses },
+      alignKey: situation.outputs.align!.outputKey,
       refine: from === 'glance',
+      refined: refinedBefore(situation, store),
       light: meter.files.light ? pathOf(situation, store, 'meter', 'light') : null,
       bases: basesOf(situation, store),
       frameTimes: { read: pathOf(situation, store, 'inspect', 'frame-times'), aligned: pathOf(situation, store, 'align', 'frame-times') },
@@ -90,7 +101,8 @@ export const sum = defineStage<Payload, Result>({
     let decoded = made.frames
     if (decodeAll && !payload.light) await writeLight(files.light = join(helpers.workDir, 'light.npz'), light)
 
-    const refined = payload.refine ? await refine(payload, timingLight(light), proposed) : null
+    const known = payload.manualCutList && !decodeAll ? payload.refined : null
+    const refined = payload.refine && !known ? await refine(payload, timingLight(light), proposed) : null
     const groups = refined?.groups ?? proposed
     const recut = JSON.stringify(groups) !== JSON.stringify(proposed)
     if (recut) {
@@ -98,8 +110,8 @@ export const sum = defineStage<Payload, Result>({
       decoded += made.frames
     }
     for (const [id, { path }] of made.sums) files[sumFileName(id)] = path
-    Object.assign(files, await writeTiming(payload, refined, groups, helpers.workDir))
-    const timing = refined?.alignment ?? payload.alignment
+    Object.assign(files, await writeTiming(payload, refined, known, groups, helpers.workDir))
+    const timing = refined?.alignment ?? known?.alignment ?? payload.alignment
     const used = groups.reduce((total, group) => total + group.frameCount, 0)
     helpers.log(`${decoded} frames decoded for ${groups.length} sums.`)
     return {
@@ -108,13 +120,13 @@ export const sum = defineStage<Payload, Result>({
         ? `With every frame measured, the alignment is no longer sure. ${refined.alignment.evidence.reasons[0] ?? ''} Accept or correct it on the acquisition.`
         : `${groups.length} groups, ${used} of ${source.clip.frameCount} frames added.`,
       facts: {
-        clipKey: payload.clipKey, cutListVersion: payload.cutListVersion, frameCount: source.clip.frameCount, refined: refined !== null,
+        clipKey: payload.clipKey, cutListVersion: payload.cutListVersion, frameCount: source.clip.frameCount, refined: payload.refine, alignKey: payload.alignKey,
         // A refined alignment gets its version when it is published.
-        alignment: { version: refined ? 0 : timing.version, offsetSeconds: timing.offsetSeconds, driftPpm: timing.driftPpm, losses: timing.losses },
-        spans: groups.map(({ id, firstFrame, frameCount }) => ({ id, firstFrame, frameCount })),
+        alignment: { version: refined ? 0 : (known ?? payload).alignment.version, offsetSeconds: timing.offsetSeconds, driftPpm: timing.driftPpm, losses: timing.losses },
+        spans: groups.filter(group => made.sums.has(group.id)).map(({ id, firstFrame, frameCount }) => ({ id, firstFrame, frameCount, ...made.sums.get(id)!.digest })),
       },
       files,
-      flags: refined ? [...outsideFlags(refined.alignment.predicted), ...lossFlags(refined.alignment.losses)].map(flag => ({ ...flag, stage: 'sum' })) : [],
+      flags: payload.refine ? [...outsideFlags(await readFloat64(files.predicted!)), ...lossFlags(timing.losses)].map(flag => ({ ...flag, stage: 'sum' })) : [],
       groups, recut, alignment: refined?.alignment ?? null,
     }
   },
@@ -133,10 +145,17 @@ const foundBy = ({ offsetSeconds, driftPpm, residual, confidence, evidence }: Fo
 function basesOf({ outputs }: Situation, store: FileStore): SumFile[] {
   const facts = outputs.sum?.facts as unknown as Partial<FactsOf<'sum'>> | undefined
   if (!facts?.spans || facts.clipKey !== outputs.inspect!.outputKey) return []
-  return facts.spans.flatMap(({ id, firstFrame, frameCount }) => {
+  return facts.spans.flatMap(({ id, firstFrame, frameCount, sha256, crc }) => {
     const key = outputs.sum!.files[sumFileName(id)]
-    return key ? [{ path: store.localPath(key), firstFrame, frameCount }] : []
+    return key ? [{ path: store.localPath(key), firstFrame, frameCount, digest: { sha256, crc } }] : []
   })
+}
+
+/** With a person's cut list nothing else follows from the alignment with every frame, so it need not be made again. */
+function refinedBefore(situation: Situation, store: FileStore): RefinedBefore | null {
+  const facts = situation.outputs.sum?.facts as unknown as Partial<FactsOf<'sum'>> | undefined
+  if (!facts?.refined || facts.alignKey !== situation.outputs.align!.outputKey || !situation.outputs.sum!.inputsKey) return null
+  return { alignment: facts.alignment!, frameTimes: pathOf(situation, store, 'sum', 'frame-times'), predicted: pathOf(situation, store, 'sum', 'predicted') }
 }
 
 async function refine(payload: Payload, frameLight: Float64Array, groups: Group[]): Promise<Refined> {
@@ -149,11 +168,11 @@ async function refine(payload: Payload, frameLight: Float64Array, groups: Group[
 }
 
 /** What the check stage and the pages read of the timing in force. */
-async function writeTiming({ frameTimes, predicted }: Payload, refined: Refined | null, groups: Group[], workDir: string): Promise<Record<string, string>> {
+async function writeTiming({ frameTimes, predicted }: Payload, refined: Refined | null, known: RefinedBefore | null, groups: Group[], workDir: string): Promise<Record<string, string>> {
   const files = { 'groups': join(workDir, 'groups.json'), 'frame-times': join(workDir, 'frame-times.npy'), 'predicted': join(workDir, 'predicted.npy') }
   await writeFile(files.groups, JSON.stringify(groups))
-  await writeFile(files['frame-times'], await readFile(frameTimes.aligned))
-  await writeFile(files.predicted, await readFile(predicted))
+  await writeFile(files['frame-times'], await readFile(known?.frameTimes ?? frameTimes.aligned))
+  await writeFile(files.predicted, await readFile(known?.predicted ?? predicted))
   if (refined) {
     await writeTimes(files['frame-times'], refined.frameTimesSeconds)
     await writeTimes(files.predicted, refined.alignment.predicted)

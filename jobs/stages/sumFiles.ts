@@ -1,4 +1,4 @@
-import { copyFile, link, readFile, writeFile } from 'node:fs/promises'
+import { copyFile, link, open, readFile } from 'node:fs/promises'
 import { join } from 'node:path'
 import type { ClipFacts, Group, LampPatch } from '../../shared/measurement'
 import { assertSummable, meterFrame, type FrameMeter } from '../imaging/accumulate'
@@ -10,6 +10,7 @@ import { decodeClip, decodeRanges, type FrameSink } from './decode'
 import { FrameSummer } from './frameSummer'
 import { setLight, type FrameLight } from './lightFile'
 import type { StageHelpers } from './stage'
+import { digestOf, type SumDigest } from './sumDigest'
 
 export interface ClipSource {
   path: string
@@ -22,6 +23,7 @@ export interface ClipSource {
 /** A sum that exists as a file: raw little-endian uint32, height × width. */
 export interface SumFile extends FrameSpan {
   path: string
+  digest: SumDigest
 }
 
 type Task = SumTask<Group, SumFile>
@@ -66,15 +68,22 @@ export async function makeSums({ source, kernel, groups, bases, light, folder }:
   for (const group of groups) assertSummable(group.frameCount)
   const tasks = planSums(groups, light ? [] : bases)
   const sums = new Map<string, SumFile>()
-  const fileOf = ({ target }: Task) => {
-    const file = { path: join(folder, target.id), firstFrame: target.firstFrame, frameCount: target.frameCount }
-    sums.set(target.id, file)
-    return file.path
+  const syncing: Promise<void>[] = []
+  const fileOf = ({ target: { id, firstFrame, frameCount } }: Task, digest: SumDigest) => {
+    const path = join(folder, id)
+    sums.set(id, { path, firstFrame, frameCount, digest })
+    return path
   }
-  for (const task of tasks) if (!task.parts.length) await share(task.base!.path, fileOf(task))
+  for (const task of tasks) if (!task.parts.length) await share(task.base!.path, fileOf(task, task.base!.digest))
   const summer = new FrameSummer(kernel, tasks, {
     read: async base => wordsOf(await readFile(base.path)),
-    write: (task, image) => writeFile(fileOf(task), new Uint8Array(image.buffer, image.byteOffset, image.byteLength)),
+    async write(task, image) {
+      const bytes = new Uint8Array(image.buffer, image.byteOffset, image.byteLength)
+      const file = await open(fileOf(task, digestOf(bytes)), 'w')
+      await file.writeFile(bytes)
+      // To the disk while decoding goes on, so that storing it later waits for nothing.
+      syncing.push(file.sync().finally(() => file.close()))
+    },
     ...light ? { meter: lightTaker(source, light) } : {},
   })
   const sink: FrameSink = { slot: frame => summer.slot(frame), push: frame => summer.push(frame) }
@@ -82,6 +91,7 @@ export async function makeSums({ source, kernel, groups, bases, light, folder }:
   if (light) await decodeClip(path, clip, helpers, sink)
   else if (needed.length) await decodeRanges(path, clip, index, needed, helpers, sink)
   summer.finish()
+  await Promise.all(syncing)
   return { sums, frames: light ? clip.frameCount : needed.reduce((sum, { frameCount }) => sum + frameCount, 0) }
 }
 

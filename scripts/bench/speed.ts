@@ -1,7 +1,8 @@
-import { execFileSync } from 'node:child_process'
+import { execFile } from 'node:child_process'
 import { tmpdir } from 'node:os'
 import { fileURLToPath } from 'node:url'
 import { join } from 'node:path'
+import { promisify } from 'node:util'
 import type { Group } from '../../shared/measurement'
 import type { CutList, FrameSet, Job } from '../../shared/schemas/results'
 import { eventsUntil, startApplication, type Application, type Client } from '../../tests/support/application'
@@ -18,6 +19,7 @@ interface Session {
   acquisitionId: string
 }
 
+const run = promisify(execFile)
 const seconds = (milliseconds: number) => milliseconds / 1000
 
 async function timed(work: () => unknown): Promise<number> {
@@ -44,7 +46,7 @@ export async function measureSpeed({ seconds: length, keyframeInterval }: { seco
     row('runner + ffmpeg, resident MiB', mostBytes / 2 ** 20, '≤ 600', `clip of ${length} s, 1920×1080`)
 
     const groups = await cutListOf(session)
-    const plain = await timed(() => execFileSync('/usr/bin/python3', [fileURLToPath(new URL('plain.py', import.meta.url)), take.clip, ...groups.map(group => `${group.firstFrame}:${group.frameCount}`)]))
+    const plain = await timed(() => run('/usr/bin/python3', [fileURLToPath(new URL('plain.py', import.meta.url)), take.clip, ...groups.map(group => `${group.firstFrame}:${group.frameCount}`)]))
     row('upload proven → frame sets ready ÷ OpenCV/NumPy script', full.milliseconds / plain, '< 1', `the script decodes and adds only: ${seconds(plain).toFixed(1)} s`)
 
     const moved = await moveBoundary(session, groups)
@@ -55,7 +57,7 @@ export async function measureSpeed({ seconds: length, keyframeInterval }: { seco
   }
 }
 
-const decodeOnly = ({ clip }: BenchTake) => timed(() => execFileSync('ffmpeg', ['-nostdin', '-v', 'error', '-i', clip, '-f', 'null', '-']))
+const decodeOnly = ({ clip }: BenchTake) => timed(() => run('ffmpeg', ['-nostdin', '-v', 'error', '-i', clip, '-f', 'null', '-']))
 
 async function openSession(application: Application): Promise<Session> {
   const technician = await application.signIn('technician')

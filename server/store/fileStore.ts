@@ -10,6 +10,8 @@ import type { Readable } from 'node:stream'
 export interface FileStore {
   /** Moves a finished local file in: synced, then renamed, so a crash leaves either nothing or all of it. */
   put: (key: string, localPath: string) => Promise<void>
+  /** The same for several files, with one wait for the disk. */
+  putAll: (files: { key: string, localPath: string }[]) => Promise<void>
   openRange: (key: string, range?: { start: number, end: number }) => Readable
   stat: (key: string) => Promise<{ bytes: number } | null>
   remove: (key: string) => Promise<void>
@@ -24,14 +26,17 @@ export function createLocalFileStore(root: string): FileStore {
     if (!path.startsWith(resolve(root) + sep)) throw new Error(`The key “${key}” leads out of the store.`)
     return path
   }
+  async function putAll(files: { key: string, localPath: string }[]): Promise<void> {
+    const moves = files.map(({ key, localPath }) => ({ path: pathOf(key), localPath }))
+    const folders = [...new Set(moves.map(({ path }) => dirname(path)))]
+    for (const folder of folders) await mkdir(folder, { recursive: true })
+    await Promise.all(moves.map(({ localPath }) => syncPath(localPath)))
+    for (const { path, localPath } of moves) await rename(localPath, path)
+    await Promise.all(folders.map(syncPath))
+  }
   return {
-    async put(key, localPath) {
-      const path = pathOf(key)
-      await mkdir(dirname(path), { recursive: true })
-      await syncPath(localPath)
-      await rename(localPath, path)
-      await syncPath(dirname(path))
-    },
+    put: (key, localPath) => putAll([{ key, localPath }]),
+    putAll,
     openRange: (key, range) => createReadStream(pathOf(key), range ?? {}),
     async stat(key) {
       try {
