@@ -50,30 +50,32 @@ export interface StageRun {
   abort: () => void
 }
 
-/**
- * A worker thread that is loaded already: a stage of a few milliseconds should not wait for its program. One is kept
- * in reserve for each entry.
- */
-const reserve = new Map<string, Worker>()
+/** Threads that are loaded and idle, by entry: a stage of a few milliseconds should not wait for its program. */
+const idle = new Map<string, Worker[]>()
+
+/** These fill the memory with pictures and channels; it is given back at once when their thread ends. */
+const endsItsThread: ReadonlySet<Stage> = new Set(['record', 'sum', 'check'])
+const mostIdle = 2
+
+export function prepareWorker(entry: string): void {
+  if (!idle.get(entry)?.length) keepWorker(entry, startWorker(entry))
+}
 
 // The pixel pipe's end is closed by its socket: a second closing at the thread's end would hit somebody else's file.
 const startWorker = (entry: string) => new Worker(entry, { trackUnmanagedFds: false })
 
-export function prepareWorker(entry: string): void {
-  if (reserve.has(entry)) return
-  const worker = startWorker(entry)
-  const forget = () => {
-    if (reserve.get(entry) === worker) reserve.delete(entry)
-  }
+function keepWorker(entry: string, worker: Worker): void {
+  const forget = () => idle.set(entry, idle.get(entry)!.filter(other => other !== worker))
+  worker.removeAllListeners()
   worker.once('error', forget)
   worker.once('exit', forget)
   worker.unref()
-  reserve.set(entry, worker)
+  idle.set(entry, [...idle.get(entry) ?? [], worker])
 }
 
 function takeWorker(entry: string): Worker {
-  const worker = reserve.get(entry) ?? startWorker(entry)
-  reserve.delete(entry)
+  const worker = idle.get(entry)?.shift() ?? startWorker(entry)
+  worker.removeAllListeners()
   worker.ref()
   return worker
 }
@@ -92,6 +94,13 @@ export function runInWorker(entry: string, task: WorkerTask, onProgress: (progre
     })
     worker.once('error', reject)
     worker.once('exit', code => reject(new Error(`The worker thread ended with code ${code} before it had a result`)))
+  }).then((result) => {
+    if (timer || endsItsThread.has(task.stage) || (idle.get(entry)?.length ?? 0) >= mostIdle) void worker.terminate()
+    else keepWorker(entry, worker)
+    return result
+  }, (error) => {
+    void worker.terminate()
+    throw error
   }).finally(() => clearTimeout(timer))
   return {
     result,

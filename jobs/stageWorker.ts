@@ -1,4 +1,4 @@
-/** Worker thread: waits for one stage and runs it. Pixels are touched here and in ffmpeg, so the runner's heartbeat never stalls. */
+/** Worker thread: runs one stage after another. Pixels are touched here and in ffmpeg, so the runner's heartbeat never stalls. */
 import { parentPort } from 'node:worker_threads'
 import { failureOf, type WorkerMessage, type WorkerOrder, type WorkerTask } from './stageProcess'
 import { stageDefinitions } from './stages'
@@ -6,10 +6,11 @@ import type { StageHelpers } from './stages/stage'
 import { runVerify, type VerifyPayload } from './stages/verify'
 
 const port = parentPort!
-const controller = new AbortController()
+let controller = new AbortController()
 const send = (message: WorkerMessage) => port.postMessage(message)
 
 async function run({ stage, payload, workDir }: WorkerTask): Promise<void> {
+  controller = new AbortController()
   const helpers: StageHelpers = {
     signal: controller.signal,
     workDir,
@@ -21,8 +22,6 @@ async function run({ stage, payload, workDir }: WorkerTask): Promise<void> {
     send({ kind: 'result', result })
   } catch (error) {
     send({ kind: 'failure', failure: failureOf(error) })
-  } finally {
-    port.close()
   }
 }
 

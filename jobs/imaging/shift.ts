@@ -1,4 +1,5 @@
 import { solveLinear } from '../signal/linearSolve'
+import type { Rectangle } from './accumulate'
 import { coarseShift } from './coarseShift'
 import { shiftEquations } from './shiftEquations'
 import { registrationTiles } from './registrationTiles'
@@ -16,14 +17,16 @@ export interface Shift {
 }
 
 const largestIterations = 20
-const enough = 1e-4
+/** Pictures that correlate so well when registered have found each other. */
+const surelyTheSame = 0.9
+const enough = 5e-4
 /** Smallest over largest eigenvalue of the gradients' sum of squares, below which one direction has no texture. */
 const leastTexture = 1e-4
 
 /**
  * Sub-pixel translation between two pictures of the same scene: b(x, y) ≈ gain·a(x − dx, y − dy) + offset.
  *
- * A whole-pixel start by normalised correlation, then Gauss–Newton on the brightness difference (Lucas & Kanade 1981),
+ * A start at no shift or, where that does not settle it, at whole pixels by normalised correlation, then Gauss–Newton on the brightness difference (Lucas & Kanade 1981),
  * both pictures moved half-way towards each other so that interpolation acts on both alike, with the matched 7-tap
  * prefilter and derivative of Farid & Simoncelli (2004). Gain and offset are fitted along. Large pictures are read in up
  * to nine tiles. Good to 0.01 px for textured pictures and shifts up to `searchPixels`; border pixels are not used.
@@ -35,7 +38,14 @@ const leastTexture = 1e-4
 export function estimateShift(a: ArrayLike<number>, b: ArrayLike<number>, width: number, height: number, { searchPixels = 12 }: { searchPixels?: number } = {}): Shift {
   if (a.length !== width * height || b.length !== width * height) throw new RangeError(`Both pictures must have ${width}×${height} pixels.`)
   const tiles = registrationTiles(width, height, searchPixels)
-  let { dx, dy } = coarseShift(a, b, width, tiles, searchPixels)
+  // Nearly always nothing has moved: the search for whole pixels is worth its time only when that start leads nowhere.
+  const near = refineShift(a, b, width, tiles, searchPixels, { dx: 0, dy: 0 })
+  if (near.converged && near.correlation >= surelyTheSame && Math.hypot(near.dx, near.dy) <= 1) return near
+  return refineShift(a, b, width, tiles, searchPixels, coarseShift(a, b, width, tiles, searchPixels))
+}
+
+function refineShift(a: ArrayLike<number>, b: ArrayLike<number>, width: number, tiles: readonly Rectangle[], searchPixels: number, start: { dx: number, dy: number }): Shift {
+  let { dx, dy } = start
   let iterations = 0
   let correlation = Number.NaN
   for (; iterations < largestIterations; iterations++) {

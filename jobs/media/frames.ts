@@ -66,8 +66,8 @@ export const sizeChanges = ({ width, height }: ReadableClip, stderrTail = '') =>
 /** What a decoder may use and how long it may be silent. */
 export const containment = (clip: ReadableClip, threads = defaultThreads()) => ({ limits: decodeLimits(clip, threads), idleSeconds: 120 })
 
-/** One frame more in the making than ffmpeg's own choice fills the time in which a frame waits to be written out. */
-const defaultThreads = () => Math.min(16, availableParallelism() + 2)
+/** More frames in the making than ffmpeg would choose: cores stay busy while a finished frame waits to be taken. */
+const defaultThreads = () => Math.min(16, availableParallelism() + 4)
 
 /**
  * Options in front of the input, and the output's. extractplanes hands the luma codes on untouched (`-pix_fmt gray` would

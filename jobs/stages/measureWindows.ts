@@ -5,7 +5,7 @@ import type { StageHelpers } from './stage'
 import { lightSink, type ClipSource } from './sumFiles'
 
 /** Starting ffmpeg and seeking is most of the work of a short window, and one thread's work. */
-const windowsAtOnce = 3
+const windowsAtOnce = 2
 
 /** Measures the light of a few short windows of frames, several at a time. */
 export async function measureWindows(source: ClipSource, windows: readonly FrameRange[], light: FrameLight, { signal, log }: Pick<StageHelpers, 'signal' | 'log'>): Promise<void> {

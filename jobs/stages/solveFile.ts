@@ -45,9 +45,13 @@ export async function writeSetFile(path: string, { sums, small }: SetArrays, sol
     const solving = solve({ scene: offset('scene'), p: offset('p'), q: offset('q'), noise: offset('noise') })
     const copying = copySums(writer, layout.members.get('sums')!, sums)
     await Promise.all([solving, copying])
+    // To the disk while checksums are taken, so that storing the file later waits for little.
+    const syncing = file.datasync()
+    syncing.catch(() => {})
     for (const [name, array] of Object.entries(small)) await writeSmall(writer, layout.members.get(name)!, array)
     for (const name of solved) await takeIn(writer, layout.members.get(name)!, file)
     await writer.write(centralDirectory([...layout.members.values()].map(({ member }) => member), layout.end))
+    await syncing
     return { bytes: writer.position, sha256: writer.digest() }
   } finally {
     await file.close()

@@ -12,11 +12,15 @@ export function residentBytes(pid: number): number {
   return childrenOf(pid).reduce((sum, child) => sum + residentBytes(child), own)
 }
 
-/** Samples until `stop`, which answers the largest value seen. */
-export function watchMemory(pid: number): { stop: () => number } {
-  let most = 0
-  const timer = setInterval(() => most = Math.max(most, residentBytes(pid)), 150)
+/** Samples until `stop`, which answers the largest value seen under each mark. */
+export function watchMemory(pid: number): { mark: (name: string) => void, stop: () => Map<string, number> } {
+  const most = new Map<string, number>()
+  let current = 'start'
+  const timer = setInterval(() => most.set(current, Math.max(most.get(current) ?? 0, residentBytes(pid))), 150)
   return {
+    mark(name) {
+      current = name
+    },
     stop() {
       clearInterval(timer)
       return most

@@ -38,12 +38,12 @@ export async function measureSpeed({ seconds: length, keyframeInterval }: { seco
     const session = await openSession(application)
     const decodeBefore = await decodeOnly(take)
     const memory = watchMemory(application.runnerPid())
-    const full = await wholeRun(session, take)
-    const mostBytes = memory.stop()
+    const full = await wholeRun(session, take, memory.mark)
+    const memories = memory.stop()
     const decodeAfter = await decodeOnly(take)
     const decode = (decodeBefore + decodeAfter) / 2
     row('upload proven → frame sets ready ÷ ffmpeg -f null', full.milliseconds / decode, '≤ 1.40', `${seconds(full.milliseconds).toFixed(1)} s ÷ ${seconds(decode).toFixed(1)} s; ${full.stages}`)
-    row('runner + ffmpeg, resident MiB', mostBytes / 2 ** 20, '≤ 600', `clip of ${length} s, 1920×1080`)
+    row('runner + ffmpeg, resident MiB', Math.max(...memories.values()) / 2 ** 20, '≤ 600', [...memories].map(([stage, bytes]) => `${stage} ${Math.round(bytes / 2 ** 20)}`).join(' · '))
 
     const groups = await cutListOf(session)
     const plain = await timed(() => run('/usr/bin/python3', [fileURLToPath(new URL('plain.py', import.meta.url)), take.clip, ...groups.map(group => `${group.firstFrame}:${group.frameCount}`)]))
@@ -67,11 +67,12 @@ async function openSession(application: Application): Promise<Session> {
 }
 
 /** From the moment the last file is proven to the end of the check stage. */
-async function wholeRun({ application, technician, analyst, acquisitionId }: Session, take: BenchTake): Promise<{ milliseconds: number, stages: string }> {
+async function wholeRun({ application, technician, analyst, acquisitionId }: Session, take: BenchTake, onStage: (stage: string) => void): Promise<{ milliseconds: number, stages: string }> {
   let start = 0
   let stored = 0
   await eventsUntil(analyst, (event) => {
     if (event.type === 'upload' && event.data.state === 'stored' && ++stored === 2) start = performance.now()
+    if (event.type === 'job' && event.data.state === 'running' && event.data.acquisitionId === acquisitionId) onStage(event.data.stage as string)
     return isEnd(acquisitionId, 'check')(event)
   }, {
     signal: AbortSignal.timeout(3_600_000),
@@ -100,11 +101,11 @@ async function stageTimes(analyst: Client, acquisitionId: string, since = 0): Pr
 
 const cutListOf = async ({ analyst, acquisitionId }: Session) => (await analyst.call<CutList>('GET', `/api/acquisitions/${acquisitionId}/cut-list`)).groups
 
-/** One group loses three frames at its start and one at its end; afterwards everything is summed again from nothing. */
+/** One group starts three frames later; afterwards everything is summed again from nothing. */
 async function moveBoundary(session: Session, groups: Group[]): Promise<{ milliseconds: number, identical: boolean, stages: string }> {
   const { analyst, acquisitionId } = session
   const at = Math.floor(groups.length / 2)
-  const edited = groups.map((group, index) => index === at ? { ...group, firstFrame: group.firstFrame + 3, frameCount: group.frameCount - 4 } : group)
+  const edited = groups.map((group, index) => index === at ? { ...group, firstFrame: group.firstFrame + 3, frameCount: group.frameCount - 3 } : group)
   const since = Date.now()
   const milliseconds = await timed(() => eventsUntil(analyst, isEnd(acquisitionId, 'check'), { onOpen: () => analyst.call('PUT', `/api/acquisitions/${acquisitionId}/cut-list`, { groups: edited }) }))
   const stages = await stageTimes(analyst, acquisitionId, since)
