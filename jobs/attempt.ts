@@ -56,9 +56,10 @@ export class Attempt {
       await mkdir(workDir, { recursive: true })
       const prepared = await this.prepare()
       this.run = runInWorker(this.context.workerEntry, { stage: this.claim.stage, payload: prepared.payload, workDir }, progress => this.progress = progress, line => this.note(line))
+      // Loads while this stage runs, so that the next one finds it ready.
+      prepareWorker(this.context.workerEntry)
       if (this.ending) this.run.abort()
       const result = await this.run.result
-      prepareWorker(this.context.workerEntry)
       if (this.ending) await this.settleEnding()
       else await this.settleResult(prepared, result)
     } catch (error) {

@@ -61,7 +61,7 @@ function installNpmPackages() {
 }
 
 const [major, minor] = process.versions.node.split('.').map(Number)
-if (major < 20 || (major === 20 && minor < 11)) stop(`Node ${process.versions.node} is too old. Install Node 20.11 or a newer 20.x.`)
+if (major < 20 || (major === 20 && minor < 15)) stop(`Node ${process.versions.node} is too old. Install Node 20.15 or a newer 20.x.`)
 installDebianPackages()
 installNpmPackages()
 

@@ -43,6 +43,12 @@ afterAll(async () => {
 const register = async (title: string) => (await technician.call<{ id: string }>('POST', '/api/acquisitions', { campaignId, title, frameExposureSeconds: 0.02, transfer: 'auto', range: 'auto', plan: [{ frequencyHz: 233.7, repetitions: 3 }] })).id
 const endOf = (id: string, stage: string) => (event: { type: string, data: Record<string, unknown> }) => event.type === 'job' && event.data.acquisitionId === id && event.data.stage === stage && ['done', 'failed', 'needs review'].includes(event.data.state as string)
 const npzOf = async (frameSet: FrameSet) => Buffer.from(await (await analyst.fetch(`/api/frame-sets/${frameSet.id}/files/frameset.npz`)).arrayBuffer())
+/** What numpy makes of the clip, and of the set's integrals and sums. */
+async function inNumpy(frameSet: FrameSet) {
+  const npz = join(folder, 'frameset.npz')
+  writeFileSync(npz, await npzOf(frameSet))
+  return JSON.parse(execFileSync('/usr/bin/python3', [join(import.meta.dirname, 'sums.py'), join(folder, 'scene.mp4'), npz, '192', '128'], { encoding: 'utf8', maxBuffer: 1 << 26 })) as { equal: boolean[], solved: number, dtypes: Record<string, string>, shape: number[] }
+}
 const sha256 = (bytes: Buffer) => createHash('sha256').update(bytes).digest('hex')
 const currentSet = async () => (await analyst.call<{ items: FrameSet[] }>('GET', `/api/frame-sets?acquisitionId=${acquisitionId}`)).items.find(each => !each.superseded)!
 
@@ -86,9 +92,7 @@ describe('a technician uploads a clip and its record', () => {
   })
 
   it('gets sums that numpy finds equal to its own, and the same least squares', async () => {
-    const npz = join(folder, 'frameset.npz')
-    writeFileSync(npz, await npzOf(set))
-    const answer = JSON.parse(execFileSync('/usr/bin/python3', [join(import.meta.dirname, 'sums.py'), join(folder, 'scene.mp4'), npz, '192', '128'], { encoding: 'utf8', maxBuffer: 1 << 26 })) as { equal: boolean[], solved: number, dtypes: Record<string, string>, shape: number[] }
+    const answer = await inNumpy(set)
     expect(answer.equal.length).toBe(set.groups.length)
     expect(answer.equal.every(Boolean)).toBe(true)
     expect(answer.solved).toBeLessThan(1e-4)
@@ -127,6 +131,43 @@ describe('a runner killed in the middle of sum', () => {
     // The same sums on the same record: the frame set that was there stands.
     expect(again.id).toBe(set.id)
     expect(again.files.find(each => each.name === 'frameset.npz')!.sha256).toBe(before)
+  })
+})
+
+describe('an edited cut list', () => {
+  it('decodes only what changed sides, and numpy finds the sums right', async () => {
+    const { groups } = await analyst.call<CutList>('GET', `/api/acquisitions/${acquisitionId}/cut-list`)
+    const edited = groups.map((group, index) => index === 2 ? { ...group, firstFrame: group.firstFrame + 2, frameCount: group.frameCount - 3 } : group)
+    await eventsUntil(analyst, endOf(acquisitionId, 'check'), { onOpen: () => analyst.call('PUT', `/api/acquisitions/${acquisitionId}/cut-list`, { groups: edited }) })
+    const [sum] = (await analyst.call<{ items: Job[] }>('GET', `/api/jobs?acquisitionId=${acquisitionId}`)).items.filter(job => job.stage === 'sum')
+    const { log } = await analyst.call<Job>('GET', `/api/jobs/${sum!.id}`)
+    expect(log).toMatch(/\b3 frames decoded/)
+    set = await currentSet()
+    expect(set.groups[2]).toMatchObject({ firstFrame: edited[2]!.firstFrame, frameCount: edited[2]!.frameCount })
+    const { equal } = await inNumpy(set)
+    expect(equal.length).toBe(set.groups.length)
+    expect(equal.every(Boolean)).toBe(true)
+  })
+})
+
+describe('a frame set solved again', () => {
+  const solve = (reject: number[]) => analyst.call<FrameSet>('POST', `/api/frame-sets/${set.id}/solve`, { reject })
+
+  it('leaves a repetition out and takes it back, from the stored sums, as numpy solves them', async () => {
+    const before = set.files.find(file => file.name === 'frameset.npz')!.sha256
+    set = await solve([2])
+    expect(set.groups.filter(group => !group.accepted).map(group => group.repetition)).toEqual(set.groups.filter(group => group.repetition === 2 && group.role !== 'dark').map(() => 2))
+    expect((await inNumpy(set)).solved).toBeLessThan(1e-4)
+    expect(set.files.find(file => file.name === 'frameset.npz')!.sha256).not.toBe(before)
+    set = await solve([])
+    expect(set.files.find(file => file.name === 'frameset.npz')!.sha256).toBe(before)
+  })
+
+  it('is refused to a technician, for a repetition that is not there, and when nothing would be left', async () => {
+    const ask = (client: Client, reject: number[]) => client.fetch(`/api/frame-sets/${set.id}/solve`, { method: 'POST', headers: { 'content-type': 'application/json' }, body: JSON.stringify({ reject }) })
+    expect((await ask(technician, [2])).status).toBe(403)
+    expect((await ask(analyst, [9])).status).toBe(400)
+    expect([400, 409]).toContain((await ask(analyst, [1, 2, 3])).status)
   })
 })
 

@@ -21,11 +21,11 @@ const kinds: [string, string, number, string[]][] = [
 ]
 
 /** Every frame's luma digest and mean code, as the reader hands them over. */
-async function ours(path: string) {
+async function ours(path: string, threads?: number) {
   const { facts } = await probeClip(path, { transfer: 'auto', range: 'auto' })
   const digests: string[] = []
   const means: number[] = []
-  await readFrames(path, facts, {}, (luma) => {
+  await readFrames(path, facts, { threads }, (luma) => {
     digests.push(createHash('md5').update(new Uint8Array(luma.buffer, luma.byteOffset, luma.byteLength)).digest('hex'))
     let sum = 0
     for (const code of luma) sum += code
@@ -48,6 +48,7 @@ describe.each(kinds)('%s', (_, name, bitDepth, options) => {
     const averages = output('ffprobe', '-f', 'lavfi', '-i', `movie=${path},signalstats`, '-show_entries', 'frame_tags=lavfi.signalstats.YAVG', '-of', 'csv=p=0').trim().split('\n').map(Number)
     expect(averages.length).toBe(35)
     averages.forEach((average, i) => expect(Math.abs(means[i] - average)).toBeLessThan(1e-3 * average))
+    for (const threads of [1, 2, 7]) expect((await ours(path, threads)).digests, `${threads} threads`).toEqual(digests)
   })
 })
 
@@ -58,7 +59,7 @@ it('the meter’s light of a flat grey frame is the table’s value at signalsta
   const table = createLightTable('bt709', 'limited', 8)
   const { facts } = await probeClip(path, { transfer: 'auto', range: 'auto' })
   let frames = 0
-  await readFrames(path, facts, {}, (luma) => {
+  await readFrames(path, facts, { threads }, (luma) => {
     frames++
     expect(meterFrame(luma, table).counts).toBe(64 * 48 * table.counts[code])
   })
