@@ -140,7 +140,7 @@ describe('an edited cut list', () => {
     const edited = groups.map((group, index) => index === 2 ? { ...group, firstFrame: group.firstFrame + 2, frameCount: group.frameCount - 3 } : group)
     await eventsUntil(analyst, endOf(acquisitionId, 'check'), { onOpen: () => analyst.call('PUT', `/api/acquisitions/${acquisitionId}/cut-list`, { groups: edited }) })
     const [sum] = (await analyst.call<{ items: Job[] }>('GET', `/api/jobs?acquisitionId=${acquisitionId}`)).items.filter(job => job.stage === 'sum')
-    const { log } = await analyst.call<Job>('GET', `/api/jobs/${sum!.id}`)
+    const { log } = await analyst.call<Job & { log: string | null }>('GET', `/api/jobs/${sum!.id}`)
     expect(log).toMatch(/\b3 frames decoded/)
     set = await currentSet()
     expect(set.groups[2]).toMatchObject({ firstFrame: edited[2]!.firstFrame, frameCount: edited[2]!.frameCount })

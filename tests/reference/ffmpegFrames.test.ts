@@ -59,7 +59,7 @@ it('the meter’s light of a flat grey frame is the table’s value at signalsta
   const table = createLightTable('bt709', 'limited', 8)
   const { facts } = await probeClip(path, { transfer: 'auto', range: 'auto' })
   let frames = 0
-  await readFrames(path, facts, { threads }, (luma) => {
+  await readFrames(path, facts, {}, (luma) => {
     frames++
     expect(meterFrame(luma, table).counts).toBe(64 * 48 * table.counts[code])
   })
