@@ -1,10 +1,10 @@
+import { newline } from './asciiBytes'
 import { findCsvLayout, type CsvLayout } from './csvLayout'
 import { RecordError } from './recordError'
 import type { RecordColumn } from './recordTable'
 
 /** Enough to hold the preamble and the first rows. */
 const headBytes = 1 << 16
-const newline = 0x0a
 
 export interface CsvHead {
   layout: CsvLayout

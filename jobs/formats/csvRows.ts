@@ -1,12 +1,9 @@
+import { carriageReturn, newline, space, tab } from './asciiBytes'
 import { blanks, delimiterNames, delimiters, overload, type CsvLayout } from './csvLayout'
 import { scanNumber } from './numberScan'
 import { QuickRow } from './quickRow'
 import { RecordError } from './recordError'
 
-const newline = 0x0a
-const space = 0x20
-const tab = 0x09
-const carriageReturn = 0x0d
 /** SCPI's numbers for "overload" and "no number" (SCPI-1999, volume 1, 7.2.1; from memory). */
 const smallestSentinel = 9.9e37
 const longestShown = 4000

@@ -1,7 +1,7 @@
+import { newline } from './asciiBytes'
 import { latin1, type RandomAccess } from './randomAccess'
 
 const windowBytes = 1 << 16
-const newline = 0x0a
 
 /** Reads lines of text at any place of a file. */
 export class LineReader {

@@ -1,11 +1,6 @@
+import { carriageReturn, comma, minus, newline, point, zero } from './asciiBytes'
 import { powersOfTen } from './numberScan'
 
-const newline = 0x0a
-const carriageReturn = 0x0d
-const minus = 0x2d
-const point = 0x2e
-const comma = 0x2c
-const zero = 0x30
 /** So many digits are exact as integers, and dividing by a power of ten rounds once. */
 const mostDigits = 15
 

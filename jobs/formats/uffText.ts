@@ -1,10 +1,9 @@
+import { newline, space } from './asciiBytes'
 import { scanNumber } from './numberScan'
 import { chunksOf, type RandomAccess } from './randomAccess'
 import { RecordError } from './recordError'
 import type { UffDataset } from './uffScan'
 
-const newline = 0x0a
-const space = 0x20
 const single = 13
 const double = 20
 

@@ -14,8 +14,6 @@ export interface CheckInput {
   integrals: Float64Array
   /** Of each repetition, see `repetitionMotion`. */
   motion: ReadonlyMap<number, RepetitionMotion>
-  /** Total distortion of each group's lamp, 0…1, where it was measured. */
-  distortions?: readonly (number | null)[]
   /** Whole-period error of each group as the cut chose it. */
   wholePeriodErrors?: readonly (number | null)[]
 }

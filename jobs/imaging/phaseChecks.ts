@@ -9,7 +9,7 @@ export function phaseChecks(input: CheckInput, repetition: number, lit: readonly
   const { groups } = input
   const phases = lit.filter(g => groups[g].role === 'phase')
   const depths = phases.flatMap(g => groups[g].depth ?? [])
-  const distortions = phases.flatMap(g => (input.distortions?.[g] ?? (groups[g] as { distortion?: number | null }).distortion) ?? [])
+  const distortions = phases.flatMap(g => groups[g].distortion ?? [])
   const results = [
     depths.length ? judge('depth', repetition, 100 * Math.min(...depths)) : unmeasured('depth', repetition, 'The lamp’s depth was not measured.'),
     quadrature(input, repetition, phases),

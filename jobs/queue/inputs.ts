@@ -23,7 +23,6 @@ export interface Situation {
   latestJobs: Partial<Record<PipelineStage, JobRow>>
   /** The newest alignment that a person accepted, and the newest cut list that a person stored. */
   manualAlignment: typeof alignments.$inferSelect | null
-  newestCutList: typeof cutLists.$inferSelect | null
   manualCutList: typeof cutLists.$inferSelect | null
   /** Frame sets that nothing newer has replaced. */
   frameSets: Pick<typeof frameSets.$inferSelect, 'id' | 'line' | 'review'>[]
@@ -50,7 +49,6 @@ export async function loadSituation(database: Database | Transaction, acquisitio
     outputs: Object.fromEntries(outputs.map(output => [output.stage, output])),
     latestJobs: latest,
     manualAlignment: alignment ?? null,
-    newestCutList: cutList ?? null,
     manualCutList: cutList?.authorId ? cutList : null,
     frameSets: sets,
   }

@@ -35,21 +35,27 @@ export function disagreeingBlocks(problem: AlignProblem, solution: Polished): { 
   let late = 0
   let odd = 0
   for (let from = 0; from + blockFrames <= errors.length; from += blockFrames) {
-    let products = 0, slopes = 0, squares = 0, frames = 0
-    for (let k = from; k < from + blockFrames; k++) {
-      if (Number.isNaN(errors[k])) continue
-      const slope = slopeAt(problem, solution, problem.times[k]) * problem.frameSeconds
-      products += slope * errors[k]
-      slopes += slope * slope
-      squares += errors[k] ** 2
-      frames++
-    }
+    const { products, slopes, squares, frames } = timingSums(problem, solution, errors, from, from + blockFrames)
     const shift = Math.abs(products / slopes)
     const isLate = shift > 0.1 && shift > 8 * noise / Math.sqrt(slopes)
     if (isLate) late++
     if (isLate || squares > 25 * noise ** 2 * frames) odd++
   }
   return { late, odd }
+}
+
+/** Sums over frames that measure an error of timing: light's error against its slope in frames. */
+function timingSums(problem: AlignProblem, solution: Polished, errors: Float64Array, from: number, to: number): { products: number, slopes: number, squares: number, frames: number } {
+  const sums = { products: 0, slopes: 0, squares: 0, frames: 0 }
+  for (let k = from; k < to; k++) {
+    if (Number.isNaN(errors[k])) continue
+    const slope = slopeAt(problem, solution, problem.times[k]) * problem.frameSeconds
+    sums.products += slope * errors[k]
+    sums.slopes += slope * slope
+    sums.squares += errors[k] ** 2
+    sums.frames++
+  }
+  return sums
 }
 
 function slopeAt(problem: AlignProblem, solution: AlignSolution, time: number): number {
@@ -170,15 +176,6 @@ function withFractions(problem: AlignProblem, found: FoundLosses): FoundLosses {
 
 /** By how many frames a stretch lies later than a solution says, to first order, and the deviation of that. */
 function blockShift(problem: AlignProblem, solution: Polished, from: number, to: number): { shift: number, deviation: number } {
-  const errors = errorsOf(problem, solution)
-  let products = 0, slopes = 0, squares = 0, frames = 0
-  for (let k = from; k < to; k++) {
-    if (Number.isNaN(errors[k])) continue
-    const slope = slopeAt(problem, solution, problem.times[k]) * problem.frameSeconds
-    products += slope * errors[k]
-    slopes += slope * slope
-    squares += errors[k] ** 2
-    frames++
-  }
+  const { products, slopes, squares, frames } = timingSums(problem, solution, errorsOf(problem, solution), from, to)
   return { shift: slopes > 0 ? products / slopes : 0, deviation: slopes > 0 ? Math.sqrt(squares / Math.max(1, frames) / slopes) : Number.POSITIVE_INFINITY }
 }

@@ -22,7 +22,6 @@ import { manifestBase, writeFrameSet, type SetFile } from './frameSetWriter'
 import { exposureOf, factsOf, pathOf, readFloat32, readFloat64 } from './inputs'
 import { provenanceOf, type Provenance } from './provenance'
 import { knownShifts } from './knownShifts'
-import { digestSums } from './solveFile'
 import { crcOfMember, type SumDigest } from './sumDigest'
 import { forceOver } from './solveForce'
 import { marksOf } from './solveIdentity'
@@ -38,8 +37,7 @@ interface Payload {
   groups: Group[]
   cutListVersion: number
   sums: Record<string, string>
-  /** Of each sum, where the sum stage left them. */
-  digests?: Record<string, SumDigest>
+  digests: Record<string, SumDigest>
   meter: string
   frameTimes: string
   illumination: string
@@ -166,13 +164,14 @@ async function checkOne(payload: Payload, light: LightIntegrals, timing: FrameTi
   }))
   const forces = await Promise.all(groups.map(group => payload.force && group.role !== 'dark' ? forceOver(payload.force, payload.sampleRateHz, timing, frequencyHz, group) : null))
   const meter = meterColumns(await readFile(payload.meter))
-  const digest = payload.digests ? knownDigest(groups.map(group => payload.digests![group.id]!), height, width) : await digestSums(sources, height, width)
-  const marks = marksOf({ line, frequencyHz, groups, integrals, forces, meter, sumsSha256: digest.sha256, provenance: payload.provenance })
+  const digests = groups.map(group => payload.digests[group.id]!)
+  const sumsSha256 = digests.map(({ sha256 }) => sha256)
+  const marks = marksOf({ line, frequencyHz, groups, integrals, forces, meter, sumsSha256, provenance: payload.provenance })
   const prior = payload.prior.find(set => set.line === line) ?? null
   if (prior?.review?.identity === marks.identity) return { line, keep: prior.id, flags: prior.review.flags.map(flag => named(flag, line, frequencyHz)) }
   const before = decisionsThatHold(prior?.review ?? null, groups, marks.repetitionKeys)
   try {
-    const shifts = knownShifts(prior?.review?.shifts ?? [], digest.sha256, (a, b) => pool.run({ kind: 'shift', a: sources[a]!, b: sources[b]!, width, height }))
+    const shifts = knownShifts(prior?.review?.shifts ?? [], sumsSha256, (a, b) => pool.run({ kind: 'shift', a: sources[a]!, b: sources[b]!, width, height }))
     const motion = await repetitionMotion(groups, shifts.register)
     helpers.signal.throwIfAborted()
     const gram = gramOfSums(sources.map(source => sampleRows(source, width, height)))
@@ -182,8 +181,8 @@ async function checkOne(payload: Payload, light: LightIntegrals, timing: FrameTi
       rejectedByPerson: before.rejections.map(({ repetition }) => repetition), acceptedByPerson: before.acceptedByPerson,
     })
     const rejections = [...before.rejections, ...reviewed.rejected.map(({ repetition, reason }) => ({ repetition, by: 'program', byId: null, reason }))].sort((a, b) => a.repetition - b.repetition)
-    const manifest = await manifestBase(line, frequencyHz, payload.provenance, forces, digest.sha256)
-    const { files, checks } = await writeFrameSet(helpers.workDir, { line, frequencyHz, groups: reviewed.groups, sources, sumsCrc: digest.crc, integrals, width, height, forces, checks: reviewed.checks, rejections, manifest }, pool)
+    const manifest = await manifestBase(line, frequencyHz, payload.provenance, forces, sumsSha256)
+    const { files, checks } = await writeFrameSet(helpers.workDir, { line, frequencyHz, groups: reviewed.groups, sources, sumsCrc: crcOfMember(digests, height, width), integrals, width, height, forces, checks: reviewed.checks, rejections, manifest }, pool)
     const flags = [...reviewed.flags, ...warningsOf(checks, reviewed.groups)]
     return { line, flags: flags.map(flag => named(flag, line, frequencyHz)), set: { frequencyHz, groups: reviewed.groups, checks, files, review: { ...marks, usable, ...before, rejections, flags, shifts: shifts.used } } }
   } catch (error) {
@@ -191,8 +190,6 @@ async function checkOne(payload: Payload, light: LightIntegrals, timing: FrameTi
     return { line, flags: [named({ code: error.code, severity: 'problem', message: error.message }, line, frequencyHz)] }
   }
 }
-
-const knownDigest = (digests: SumDigest[], height: number, width: number) => ({ crc: crcOfMember(digests, height, width), sha256: digests.map(digest => digest.sha256) })
 
 function meterColumns(bytes: Uint8Array): MeterColumns {
   const { light, clipped, black } = readNpz(bytes)

@@ -29,7 +29,7 @@ export interface FrameSetContent {
   line: number
   frequencyHz: number
   groups: Group[]
-  /** Sums of each group, and the checksum of them all (`digestSums`). */
+  /** Sums of each group, and the checksum of them all (`crcOfMember`). */
   sources: SumSource[]
   sumsCrc: number
   integrals: Float64Array

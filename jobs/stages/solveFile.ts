@@ -9,7 +9,7 @@ import { StageError } from './stage'
 const chunkBytes = 1 << 20
 
 export interface SetArrays {
-  /** Sums of the groups, [G, H, W] uint32, each in its source; `crc` over NPY header and data, see `digestSums`. */
+  /** Sums of the groups, [G, H, W] uint32, each in its source; `crc` over NPY header and data, see `crcOfMember`. */
   sums: { shape: [number, number, number], sources: SumSource[], crc: number }
   /** Everything that fits into memory, in the order of the file. */
   small: Record<string, NpyArray>
@@ -56,21 +56,6 @@ export async function writeSetFile(path: string, { sums, small }: SetArrays, sol
   } finally {
     await file.close()
   }
-}
-
-/** CRC of the sums' member and the SHA-256 of each group's sums, in one pass. */
-export async function digestSums(sources: readonly SumSource[], height: number, width: number): Promise<{ crc: number, sha256: string[] }> {
-  let crc = crc32(writeNpyHeader('uint32', [sources.length, height, width]))
-  const sha256: string[] = []
-  for (const source of sources) {
-    const hash = createHash('sha256')
-    for await (const chunk of chunksOf(source, height * width * 4)) {
-      crc = crc32(chunk, crc)
-      hash.update(chunk)
-    }
-    sha256.push(hash.digest('hex'))
-  }
-  return { crc, sha256 }
 }
 
 function planLayout(arrays: Record<string, { dtype: Dtype, shape: number[] }>): { members: Map<string, Placed>, end: number } {

@@ -46,7 +46,6 @@ export async function loadSituations(database: Database, rows: AcquisitionRow[])
       outputs: Object.fromEntries((outputsOf.get(acquisition.id) ?? []).map(output => [output.stage, output])),
       latestJobs: latest,
       manualAlignment: alignmentsOf.get(acquisition.id)?.[0] ?? null,
-      newestCutList: cutList,
       manualCutList: cutList?.authorId ? cutList : null,
       frameSets: [],
     }

@@ -4,6 +4,7 @@ import { afterAll, beforeAll, describe, expect, it } from 'vitest'
 import { writeNpy } from '../../jobs/formats/npy'
 import { readNpz, writeNpz } from '../../jobs/formats/npz'
 import { check } from '../../jobs/stages/check'
+import { digestOf } from '../../jobs/stages/sumDigest'
 import type { FrameSetReview } from '../../shared/frameSetReview'
 import type { Group } from '../../shared/measurement'
 import { solverFolder, storedLine } from '../support/solvedSets'
@@ -27,7 +28,7 @@ const prior = (review: FrameSetReview): Payload['prior'] => [{ id: 'set-1', line
 /** Four repetitions of dark, reference, sine and cosine at 400 Hz, fifty frames each, with a lamp signal to match. */
 beforeAll(async () => {
   folder = await solverFolder()
-  const { groups, content } = await storedLine(join(folder.root, 'sums'), { repetitions })
+  const { groups, digests, content } = await storedLine(join(folder.root, 'sums'), { repetitions })
   const lamp = Float32Array.from({ length: sampleRateHz * (frames / frameRateHz + 1) }, (_, i) => {
     const seconds = i / sampleRateHz
     const kind = Math.floor(seconds * frameRateHz / 50) % 4
@@ -43,6 +44,7 @@ beforeAll(async () => {
   payload = {
     clip: { width: content.width, height: content.height } as Payload['clip'], groups, cutListVersion: 1,
     sums: Object.fromEntries(groups.map((group: Group, g: number) => [group.id, content.sources[g]!.path])),
+    digests: Object.fromEntries(groups.map((group: Group, g: number) => [group.id, digests[g]!])),
     meter: write('meter', writeNpz({ light: column(frame => Math.floor(frame / 50) % 4 ? 0.4 : 0.001), clipped: column(() => 0), black: column(() => 0.01) })),
     frameTimes: write('times', writeNpy({ dtype: 'float64', shape: [frames], data: Float64Array.from({ length: frames }, (_, frame) => frame / frameRateHz) })),
     illumination: write('lamp', new Uint8Array(lamp.buffer)),
@@ -80,7 +82,7 @@ describe('the check stage', () => {
       const bytes = readFileSync(now.sums[now.groups[2]!.id]!)
       bytes[100]! ^= 1
       writeFileSync(path, bytes)
-      return { sums: { ...now.sums, [now.groups[2]!.id]: path } }
+      return { sums: { ...now.sums, [now.groups[2]!.id]: path }, digests: { ...now.digests, [now.groups[2]!.id]: digestOf(bytes) } }
     }],
     ['the alignment moved', () => ({ alignment: { offsetSeconds: 1e-5, driftPpm: 0 } })],
     ['the dark level changed', () => ({ darkLevel: 0.001 })],
@@ -102,7 +104,7 @@ describe('the check stage', () => {
     const bytes = readFileSync(payload.sums[changed.id]!)
     bytes[4]! ^= 1
     writeFileSync(path, bytes)
-    const { set } = (await run({ sums: { ...payload.sums, [changed.id]: path }, prior: prior(review) })).lines[0]!
+    const { set } = (await run({ sums: { ...payload.sums, [changed.id]: path }, digests: { ...payload.digests, [changed.id]: digestOf(bytes) }, prior: prior(review) })).lines[0]!
     expect(set!.review.rejections).toEqual([{ repetition: 2, ...person }])
     expect(set!.review.history).toEqual(history)
     expect(set!.groups.filter(group => !group.accepted).map(group => [group.repetition, group.role])).toEqual([[2, 'reference'], [2, 'phase'], [2, 'phase']])

@@ -1,9 +1,9 @@
-import { mkdtempSync, mkdirSync, rmSync, writeFileSync } from 'node:fs'
+import { mkdtempSync, mkdirSync, readFileSync, rmSync, writeFileSync } from 'node:fs'
 import { tmpdir } from 'node:os'
 import { join } from 'node:path'
 import { bundleRunner } from '../../scripts/lib/build'
 import type { Group } from '../../shared/measurement'
-import { digestSums } from '../../jobs/stages/solveFile'
+import { crcOfMember, digestOf, type SumDigest } from '../../jobs/stages/sumDigest'
 import { writeFrameSet, type FrameSetContent, type WrittenSet } from '../../jobs/stages/frameSetWriter'
 import type { SolvePool } from '../../jobs/stages/solvePool'
 import { normal, random, WaveTexture } from '../unit/imaging/pictures'
@@ -17,6 +17,7 @@ export async function solverFolder(): Promise<{ root: string, entry: string, rem
 
 export interface StoredLine {
   groups: Group[]
+  digests: SumDigest[]
   content: Omit<FrameSetContent, 'groups'>
 }
 
@@ -42,9 +43,9 @@ export async function storedLine(folder: string, { repetitions = 3, width = 90, 
       sources.push({ path, offset: 0 })
     }
   }
-  const { crc, sha256 } = await digestSums(sources, height, width)
+  const digests = sources.map(source => digestOf(readFileSync(source.path)))
   const forces = groups.map((group, g): [number, number] | null => group.role === 'dark' ? null : [3 + g, -1])
-  return { groups, content: { line: 1, frequencyHz: 400, sources, sumsCrc: crc, integrals: Float64Array.from(integrals), width, height, forces, checks: [], rejections: [], manifest: { format: 'lampsum-frame-set', sumsSha256: sha256, forces } } }
+  return { groups, digests, content: { line: 1, frequencyHz: 400, sources, sumsCrc: crcOfMember(digests, height, width), integrals: Float64Array.from(integrals), width, height, forces, checks: [], rejections: [], manifest: { format: 'lampsum-frame-set', sumsSha256: digests.map(({ sha256 }) => sha256), forces } } }
 }
 
 export function writeStored(folder: string, { groups, content }: StoredLine, pool: SolvePool): Promise<WrittenSet> {

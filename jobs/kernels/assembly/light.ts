@@ -105,13 +105,7 @@ export function countExtremeBytes(frame: usize, pixels: usize, clippedFrom: u32,
     clipped += sumLanes(i16x8.extadd_pairwise_i8x16_u(c))
     black += sumLanes(i16x8.extadd_pairwise_i8x16_u(b))
   }
-  for (; i < pixels; i++) {
-    const code = <u32>load<u8>(frame + i)
-    clipped += <u32>(code >= clippedFrom)
-    black += <u32>(code <= blackUpTo)
-  }
-  store<u32>(counts, clipped)
-  store<u32>(counts, black, 4)
+  finishCounting<u8>(frame, i, pixels, clippedFrom, blackUpTo, clipped, black, counts)
 }
 
 export function countExtremeWords(frame: usize, pixels: usize, clippedFrom: u32, blackUpTo: u32, counts: usize): void {
@@ -133,8 +127,15 @@ export function countExtremeWords(frame: usize, pixels: usize, clippedFrom: u32,
     clipped += sumLanes(c)
     black += sumLanes(b)
   }
-  for (; i < pixels; i++) {
-    const code = <u32>load<u16>(frame + (i << 1))
+  finishCounting<u16>(frame, i, pixels, clippedFrom, blackUpTo, clipped, black, counts)
+}
+
+/** The pixels that fill no whole vector, and the result. */
+// @ts-ignore: decorator
+@inline
+function finishCounting<T>(frame: usize, from: usize, pixels: usize, clippedFrom: u32, blackUpTo: u32, clipped: u32, black: u32, counts: usize): void {
+  for (let i = from; i < pixels; i++) {
+    const code = <u32>load<T>(frame + i * sizeof<T>())
     clipped += <u32>(code >= clippedFrom)
     black += <u32>(code <= blackUpTo)
   }
