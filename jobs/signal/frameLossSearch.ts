@@ -16,6 +16,8 @@ export interface FoundLosses {
 
 /** Largest gap looked for, frames. */
 const mostLostFrames = 60
+/** A camera shows a frame again once or twice; a course that goes back further is a chance likeness of other light. */
+const mostDoubledFrames = 5
 /** Frames of a block that is asked for its own timing. */
 const blockFrames = 25
 /** More losses than one in so many seconds are none: clip and record are of different shots. */
@@ -79,7 +81,7 @@ export function findLosses(problem: AlignProblem, whole: Polished): FoundLosses 
   let cost = fitCost(problem, whole)
   for (const start of starts(problem, whole)) {
     const found = follow(problem, start.solution, start.noise)
-    if (!found?.losses.length) continue
+    if (!found?.losses.length || found.losses.some(({ lostFrames }) => lostFrames < -mostDoubledFrames)) continue
     // Each loss has two numbers to fit with, and must earn them.
     const foundCost = fitCost(found.problem, found.solution) + 60 * found.losses.length
     if (foundCost >= cost) continue
