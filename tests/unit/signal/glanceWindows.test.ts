@@ -50,6 +50,13 @@ describe('the windows of a glance', () => {
     }
   })
 
+  it('reach over the clip rather than crowd where edges are many', () => {
+    for (let seed = 1; seed <= 20; seed++) {
+      const { windows } = planChangeGlance(sizes(3000, 50, [100, 160, 220, 280, 340, 400, 2900], seed))!
+      expect(windows.some(({ firstFrame, frameCount }) => firstFrame < 2900 && 2900 < firstFrame + frameCount), `seed ${seed}`).toBe(true)
+    }
+  })
+
   it('take edges even where key frames are far apart, and give up when that costs too much', () => {
     expect(planChangeGlance(sizes(3000, 250, [90, 2800], 4))!.windows).toHaveLength(2)
     expect(planChangeGlance(sizes(3000, 3000, [1400, 2800], 5))).toBeNull()
